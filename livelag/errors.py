@@ -22,11 +22,13 @@ class UnknownNameError(LivelagError, LookupError):
     """A name that is not among those that exist.
 
     Attributes:
+        what: what kind of thing was asked for.
         name: the name asked for.
         known: the names that exist, in the order they are offered.
     """
 
     def __init__(self, what: str, name: object, known: Iterable[str], where: str = "") -> None:
+        self.what = what
         self.name = name
         self.known = tuple(known)
         near = get_close_matches(str(name), self.known, n=1)
@@ -34,6 +36,10 @@ class UnknownNameError(LivelagError, LookupError):
         place = f"{where}: " if where else ""
         offer = ", ".join(self.known) or "none"
         super().__init__(f"{place}unknown {what} {str(name)!r}; {hint}known: {offer}")
+
+    def at(self, where: str) -> UnknownNameError:
+        """The same error with the place where the name stands."""
+        return UnknownNameError(self.what, self.name, self.known, where)
 
 
 class FileError(LivelagError, OSError):
