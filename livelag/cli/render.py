@@ -1,0 +1,158 @@
+"""`livelag render`: a stage as a sound file, with its pitch curve and picture if asked."""
+
+from __future__ import annotations
+
+import argparse
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from livelag.cli.common import (
+    add_command,
+    add_preset,
+    console,
+    load_preset,
+    new_table,
+    refuse,
+    seconds,
+    show_json,
+    warn,
+)
+
+if TYPE_CHECKING:
+    from livelag.cli.render_job import RenderJob
+
+DEFAULT_PHRASE = "procession"
+
+
+def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the command."""
+    parser = add_command(
+        commands,
+        "render",
+        "play a phrase or a MIDI file through a stage into a sound file",
+        "livelag render --midi song.mid --range slow --rotation 0.7 --out slow.wav",
+    )
+    add_preset(parser)
+    notes = parser.add_argument_group("notes")
+    source = notes.add_mutually_exclusive_group()
+    source.add_argument(
+        "--phrase", metavar="NAME", help=f"a shipped phrase; default {DEFAULT_PHRASE}"
+    )
+    source.add_argument("--midi", metavar="FILE", help="a Standard MIDI File, format 0 or 1")
+    notes.add_argument(
+        "--channels", metavar="1,2", help="play these channels only, 1 to 16; default all, merged"
+    )
+    notes.add_argument("--tracks", metavar="1,2", help="play these tracks only, from 1")
+    notes.add_argument("--priority", metavar="RULE", help="which held key sounds: last, low, high")
+    notes.add_argument(
+        "--retrigger", action="store_true", help="restart the level at every note, not only detached"
+    )
+    notes.add_argument(
+        "--legato-only", action="store_true", help="glide only between overlapping notes"
+    )
+    stage = parser.add_argument_group("stage")
+    stage.add_argument("--rotation", type=float, metavar="X", help="pot, 0 to 1; default 0.5")
+    stage.add_argument("--range", metavar="NAME", help="range switch; default the first range")
+    stage.add_argument("--method", metavar="M", default="exact", help="exact (default) or bilinear")
+    stage.add_argument("--bypass", action="store_true", help="without the glide, to compare with")
+    sound = parser.add_argument_group("sound")
+    sound.add_argument("--waveform", metavar="W", help="saw (default), pulse, triangle, sine")
+    sound.add_argument(
+        "--pulse-width", type=float, metavar="X", help="0.02 to 0.98, for --waveform pulse"
+    )
+    sound.add_argument("--level", type=float, metavar="DBFS", help="peak level; default -18")
+    sound.add_argument(
+        "--velocity", type=float, metavar="X", help="how far velocity sets the level, 0 (default) to 1"
+    )
+    sound.add_argument("--rate", type=int, default=48000, metavar="HZ", help="default 48000")
+    sound.add_argument("--depth", default="24", metavar="BITS", help="16, 24 (default) or float")
+    sound.add_argument(
+        "--stereo", action="store_true", help="glide volts as a DC second channel beside the sound"
+    )
+    sound.add_argument(
+        "--full-scale-volts", type=float, metavar="V",
+        help="volts at full scale of that channel; default 10",
+    )  # fmt: skip
+    files = parser.add_argument_group("files")
+    files.add_argument("--out", metavar="FILE", help=".wav or .flac; a folder for a set")
+    files.add_argument("--cv", metavar="FILE", help="the pitch curve as CSV")
+    files.add_argument(
+        "--cv-rate", type=float, metavar="HZ", help="rows a second in --cv; default 1000"
+    )
+    files.add_argument("--picture", metavar="FILE", help=".png, .svg or .pdf of the pitch curve")
+    many = parser.add_argument_group("a numbered set in one call")
+    many.add_argument("--rotations", metavar="0,0.5,1", help="render each of these rotations")
+    many.add_argument("--ranges", metavar="all", help="render each of these ranges, or all")
+    parser.set_defaults(run=run)
+
+
+def run(args: argparse.Namespace) -> None:
+    """Render one file or a numbered set."""
+    _refuse_contradictions(args)
+    from livelag.cli.render_job import RenderJob
+
+    stage = load_preset(args)
+    job = RenderJob.from_arguments(args, stage)
+    for sentence in job.song.warnings:
+        warn(sentence)
+    if args.rotations is not None or args.ranges is not None:
+        from livelag.cli.render_set import render_set
+
+        render_set(args, job)
+        return
+    out = Path(args.out or f"{Path(args.preset).stem}-{job.song_name}.wav")
+    answer = job.run(
+        out,
+        cv=Path(args.cv) if args.cv else None,
+        cv_rate=args.cv_rate or 1000.0,
+        picture=Path(args.picture) if args.picture else None,
+        show_progress=not args.json,
+    )
+    if args.json:
+        show_json(answer)
+        return
+    show_rendered(job, answer)
+
+
+def _refuse_contradictions(args: argparse.Namespace) -> None:
+    """Refuse options that would change nothing."""
+    if args.midi is None:
+        for option in ("channels", "tracks"):
+            if getattr(args, option) is not None:
+                refuse(args, f"--{option} goes with --midi")
+    if args.pulse_width is not None and args.waveform != "pulse":
+        refuse(args, "--pulse-width goes with --waveform pulse")
+    if args.full_scale_volts is not None and not args.stereo:
+        refuse(args, "--full-scale-volts goes with --stereo")
+    if args.cv_rate is not None and args.cv is None:
+        refuse(args, "--cv-rate goes with --cv")
+    if args.rotations is not None and args.rotation is not None:
+        refuse(args, "--rotation and --rotations exclude one another")
+    if args.ranges is not None and args.range is not None:
+        refuse(args, "--range and --ranges exclude one another")
+    if args.rotations is not None or args.ranges is not None:
+        for option in ("cv", "picture"):
+            if getattr(args, option) is not None:
+                refuse(args, f"--{option} is for one rendering, not for a set")
+
+
+def show_rendered(job: RenderJob, answer: dict[str, Any]) -> None:
+    """Say what was written, and what the user should know about it."""
+    out = console()
+    table = new_table("", "")
+    table.show_header = False
+    table.add_row("stage", f"{job.stage.title}; {job.where}")
+    table.add_row("notes", f"{answer['notes']} from {job.song_title}")
+    table.add_row(
+        "sound",
+        f"{answer['out']}: {answer['seconds']:.2f} s, {answer['rate_hz']} Hz, "
+        f"{answer['channels']} channel{'s' * (answer['channels'] > 1)}, "
+        f"peak {answer['peak_dbfs']:.1f} dBFS",
+    )
+    table.add_row("time constant", f"{seconds(answer['time_constant_s'])}, {answer['method']}")
+    for key in ("cv", "picture"):
+        if answer.get(key):
+            table.add_row({"cv": "pitch curve", "picture": "picture"}[key], answer[key])
+    out.print(table)
+    for sentence in job.remarks(answer):
+        warn(sentence)

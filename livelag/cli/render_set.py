@@ -1,0 +1,129 @@
+"""A numbered set of renderings in one call, spread over the cores, with an index table."""
+
+from __future__ import annotations
+
+import argparse
+import csv
+import multiprocessing
+import shutil
+import signal
+import tempfile
+from concurrent.futures import ProcessPoolExecutor
+from pathlib import Path
+from typing import Any
+
+from livelag.cli.common import console, new_table, seconds, show_json, warn
+from livelag.cli.render_job import RenderJob
+from livelag.errors import FileError, InputError
+from livelag.files import cannot_write
+
+DEFAULT_FOLDER = "livelag-set"
+INDEX_NAME = "index.csv"
+INDEX_COLUMNS = ("number", "file", "range", "rotation", "time_constant_s", "seconds", "peak_dbfs")
+
+
+def render_set(args: argparse.Namespace, job: RenderJob) -> None:
+    """Render every range asked for at every rotation asked for, whole or not at all."""
+    folder = Path(args.out or DEFAULT_FOLDER)
+    settings = [(i, r) for i in _range_indices(args, job) for r in _rotations(args, job)]
+    jobs = [job.at(index, rotation) for index, rotation in settings]
+    answers = _render_all(jobs, folder)
+    if args.json:
+        show_json({"out": str(folder), "index": str(folder / INDEX_NAME), "renders": answers})
+        return
+    table = new_table(*INDEX_COLUMNS, title=job.stage.title, right=("number", "rotation"))
+    for row in answers:
+        table.add_row(
+            str(row["number"]), Path(row["out"]).name, row["range"], f"{row['rotation']:g}",
+            seconds(row["time_constant_s"]), f"{row['seconds']:.2f}", f"{row['peak_dbfs']:.1f}",
+        )  # fmt: skip
+    console().print(table)
+    console().print(f"{len(answers)} files and {INDEX_NAME} in {folder}")
+    for sentence in dict.fromkeys(s for row in answers for s in job.remarks(row)):
+        warn(sentence)
+
+
+def _rotations(args: argparse.Namespace, job: RenderJob) -> list[float]:
+    if args.rotations is None:
+        return [job.setting.rotation]
+    try:
+        return [float(part) for part in args.rotations.split(",")]
+    except ValueError:
+        raise InputError(
+            f"--rotations is {args.rotations!r}; write numbers from 0 to 1 such as 0,0.5,1"
+        ) from None
+
+
+def _range_indices(args: argparse.Namespace, job: RenderJob) -> list[int]:
+    if args.ranges is None:
+        return [job.setting.range_index]
+    if args.ranges == "all":
+        return list(range(len(job.stage.ranges)))
+    return [job.stage.range_index(name.strip()) for name in args.ranges.split(",")]
+
+
+def _render_all(jobs: list[RenderJob], folder: Path) -> list[dict[str, Any]]:
+    """Render into a folder beside the one asked for, and move the files over when all are done."""
+    if folder.exists() and not folder.is_dir():
+        raise FileError(f"{folder}: is a file; a set of renderings needs a folder")
+    if not folder.parent.is_dir():
+        raise FileError(f"{folder}: folder {str(folder.parent)!r} does not exist; make it first")
+    try:
+        work = Path(tempfile.mkdtemp(prefix=f".{folder.name}.", suffix=".part", dir=folder.parent))
+    except OSError as error:
+        raise cannot_write(folder, error) from error
+    try:
+        names = [_name(number, job) for number, job in enumerate(jobs, start=1)]
+        answers = _in_parallel(jobs, [work / name for name in names])
+        for number, (name, answer) in enumerate(zip(names, answers, strict=True), start=1):
+            answer |= {"number": number, "out": str(folder / name)}
+        _write_index(work / INDEX_NAME, answers)
+        folder.mkdir(exist_ok=True)
+        for path in work.iterdir():
+            path.replace(folder / path.name)
+    except OSError as error:
+        if isinstance(error, FileError):
+            raise
+        raise cannot_write(folder, error) from error
+    finally:
+        shutil.rmtree(work, ignore_errors=True)
+    return answers
+
+
+def _name(number: int, job: RenderJob) -> str:
+    setting = job.setting
+    position = "".join(
+        c if c.isalnum() else "-" for c in job.stage.range_names[setting.range_index]
+    )
+    return f"{number:02d}-{position}-{setting.rotation:.3f}.wav"
+
+
+def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any]]:
+    if len(jobs) == 1:
+        return [jobs[0].run(paths[0])]
+    # Spawned, not forked: threads of the parent must not be copied half-way.
+    pool = ProcessPoolExecutor(
+        mp_context=multiprocessing.get_context("spawn"), initializer=_leave_interrupts_to_parent
+    )
+    try:
+        return list(pool.map(RenderJob.run, jobs, paths))
+    except BaseException:
+        for process in list((pool._processes or {}).values()):
+            process.terminate()
+        raise
+    finally:
+        pool.shutdown(cancel_futures=True)
+
+
+def _leave_interrupts_to_parent() -> None:
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
+def _write_index(path: Path, answers: list[dict[str, Any]]) -> None:
+    with path.open("w", encoding="utf-8", newline="") as file:
+        writer = csv.writer(file)
+        writer.writerow(INDEX_COLUMNS)
+        for row in answers:
+            writer.writerow(
+                [Path(row["out"]).name if c == "file" else row[c] for c in INDEX_COLUMNS]
+            )

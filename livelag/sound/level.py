@@ -1,0 +1,90 @@
+"""Level: the gate as a ramp without clicks, the output level, and a ceiling.
+
+A gain moves from where it stands to its target along a smoothstep, 3 g^2 - 2 g^3, counted in
+whole frames, so that the samples do not depend on the block sizes.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from livelag.units import dbfs_to_amplitude
+
+CEILING_DBFS = -1.0
+ATTACK_S = 0.003
+RELEASE_S = 0.010
+RETRIGGER_S = 0.002
+
+
+class Level:
+    """Gain over time, and the ceiling that nothing passes.
+
+    Attributes:
+        ceiling_frames: frames that the ceiling has held down since the last reset.
+    """
+
+    def __init__(self, sample_rate_hz: float) -> None:
+        self._attack = max(1, round(ATTACK_S * sample_rate_hz))
+        self._release = max(1, round(RELEASE_S * sample_rate_hz))
+        self._retrigger = max(1, round(RETRIGGER_S * sample_rate_hz))
+        self._ceiling = dbfs_to_amplitude(CEILING_DBFS)
+        self.reset()
+
+    def reset(self) -> None:
+        """Silence, gate closed, counter at zero."""
+        self._from = 0.0
+        self._plan: list[tuple[float, int]] = []  # targets to come, each with its frames
+        self._done = 0
+        self.ceiling_frames = 0
+
+    @property
+    def gain(self) -> float:
+        """Gain at the next frame."""
+        if not self._plan:
+            return self._from
+        target, frames = self._plan[0]
+        x = self._done / frames
+        return self._from + (target - self._from) * x * x * (3.0 - 2.0 * x)
+
+    def open(self, gain: float, *, retrigger: bool = False) -> None:
+        """Ramp up (or over) to a gain; with ``retrigger`` by way of silence."""
+        first = [(0.0, self._retrigger)] if retrigger and self.gain > 0.0 else []
+        self._start([*first, (gain, self._attack)])
+
+    def close(self) -> None:
+        """Ramp down to silence."""
+        self._start([(0.0, self._release)])
+
+    def _start(self, plan: list[tuple[float, int]]) -> None:
+        self._from = self.gain
+        self._plan = plan
+        self._done = 0
+
+    def fill(self, gains: NDArray[np.float64]) -> None:
+        """Write the gains of the next frames.
+
+        Args:
+            gains: (frames,) filled in place.
+        """
+        position = 0
+        while self._plan and position < len(gains):
+            target, frames = self._plan[0]
+            count = min(frames - self._done, len(gains) - position)
+            x = np.arange(self._done, self._done + count) / frames
+            gains[position : position + count] = self._from + (target - self._from) * x * x * (
+                3.0 - 2.0 * x
+            )
+            position += count
+            self._done += count
+            if self._done == frames:
+                self._from, self._done = target, 0
+                self._plan.pop(0)
+        gains[position:] = self._from
+
+    def limit(self, audio: NDArray[np.float64]) -> None:
+        """Hold a block under the ceiling, in place, and count the frames that needed it."""
+        peak = max(float(audio.max()), -float(audio.min()))
+        if peak > self._ceiling:
+            self.ceiling_frames += int(np.count_nonzero(np.abs(audio) > self._ceiling))
+            np.clip(audio, -self._ceiling, self._ceiling, out=audio)
