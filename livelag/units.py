@@ -27,7 +27,8 @@ Number = TypeVar("Number", float, NDArray[np.float64])
 
 # IEC 60062: the letter stands where the decimal point would. R and F mean a multiplier of one.
 _RKM = re.compile(
-    r"(?P<sign>-?)(?P<whole>\d*)(?P<letter>[RrFpnuµμmkKMG])(?P<fraction>\d*)(?P<unit>[ΩΩFHVsA]?)"
+    r"(?P<sign>-?)(?P<whole>\d*)(?P<letter>[RrFpnuµμmkKMG])(?P<fraction>\d*)(?P<unit>[ΩΩFHVsA]?)",
+    re.ASCII,
 )
 _RKM_EXPONENT = {
     "R": 0, "r": 0, "F": 0,
@@ -43,7 +44,8 @@ _UNIT_WORDS = {
     "": (),
 }
 _PLAIN = re.compile(
-    r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?\s*[pnuµμmkKMG]?\s*(Ω|Ω|ohms?|R|F|V|A|s)?"
+    r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?\s*[pnuµμmkKMG]?\s*(Ω|Ω|ohms?|R|F|V|A|s)?",
+    re.ASCII,
 )
 
 
@@ -68,7 +70,10 @@ def parse_value(value: object, unit: str = "", where: str = "value") -> float:
     """
     if isinstance(value, bool) or not isinstance(value, (str, int, float)):
         raise InputError(f"{where}: {value!r} is not a value; write one such as 4k7 or 470n")
-    number = float(value) if not isinstance(value, str) else _parse_text(value, unit, where)
+    try:
+        number = float(value) if not isinstance(value, str) else _parse_text(value, unit, where)
+    except OverflowError:  # a whole number of more than 308 digits
+        number = math.inf
     if not math.isfinite(number):
         raise InputError(f"{where}: {value!r} is not a finite number")
     return number

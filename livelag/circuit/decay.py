@@ -69,4 +69,4 @@ def last_time_outside(weights: Vector, poles: Vector, limit: float) -> float:
 def _root(value: Callable[[float], float], left: float, right: float) -> float:
     from scipy.optimize import brentq
 
-    return float(brentq(value, left, right, xtol=1e-15, rtol=1e-14))
+    return float(brentq(value, left, right, xtol=1e-15, rtol=1e-14, maxiter=1000))

@@ -32,6 +32,8 @@ from numpy.typing import NDArray
 Vector = NDArray[np.float64]
 Matrix = NDArray[np.float64]
 
+_RELATIVE_ROUNDING = float(np.finfo(np.float64).eps)
+
 
 @dataclass(frozen=True)
 class LinearNetwork:
@@ -89,7 +91,8 @@ class LinearNetwork:
     def state_after(self, state_v: Vector, source_v: float, time_s: float) -> Vector:
         """State (states,) in volts after the source has been held for a time."""
         modes = self.modes_after(state_v, source_v, np.array([time_s]))[0]
-        return self.to_volts @ modes + self.source_to_volts * source_v
+        state: Vector = self.to_volts @ modes + self.source_to_volts * source_v
+        return state
 
     def settled_state(self, source_v: float) -> Vector:
         """State (states,) in volts after the source has been held for ever; parked ones at 0."""
@@ -140,7 +143,7 @@ def solve(
         bus_readout: (nodes of the driven block,) 1 at the bus, or all 0 when it is bypassed.
         source_to_volts: (states,) 1 at states tied to the source, all 0 unless bypassed.
     """
-    pieces = [_solve_block(block) for block in (driven, *silent)]
+    pieces = [_solve_block(driven, _RELATIVE_ROUNDING), *(_solve_block(b, 0.0) for b in silent)]
     poles, drive, to_modes, to_volts, node_volts = zip(*pieces, strict=True)
     readout = np.zeros(sum(len(p) for p in poles))
     readout[: len(poles[0])] = bus_readout @ node_volts[0]
@@ -156,11 +159,16 @@ def solve(
     )
 
 
-def _solve_block(block: Block) -> tuple[Vector, Vector, Matrix, Matrix, Matrix]:
-    """Poles, drive, to_modes, to_volts and node voltages per mode of one block, eq. 2."""
+def _solve_block(block: Block, smallest: float) -> tuple[Vector, Vector, Matrix, Matrix, Matrix]:
+    """Poles, drive, to_modes, to_volts and node voltages per mode of one block, eq. 2.
+
+    ``smallest`` is the least size of a pole relative to the largest: 0 where a leak-free part may
+    keep its charge for ever, more where the source reaches every node and no pole can be 0.
+    """
     root = np.sqrt(block.capacitances_f)
     eigenvalues, Q = np.linalg.eigh(block.conductances_s / (root[:, None] * root))
     node_volts = Q / root[:, None]
-    poles = -np.maximum(eigenvalues, 0.0)  # rounding must not make a leak-free part grow
+    # Rounding must make neither a leak-free part grow nor a driven one stand still.
+    poles = -np.maximum(eigenvalues, smallest * eigenvalues.max(initial=0.0))
     to_modes = (Q.T * root) @ block.gather
     return poles, node_volts.T @ block.source_s, to_modes, block.expand @ node_volts, node_volts

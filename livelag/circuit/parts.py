@@ -24,6 +24,13 @@ from livelag.circuit.kinds import (
 )
 from livelag.errors import InputError, UnknownNameError
 
+# Smallest and largest that a part may be; arithmetic beyond would overflow or mean nothing.
+OHMS = (1e-3, 1e12)
+FARADS = (1e-15, 1e3)
+INSULATION_OHMS = (1.0, 1e18)
+ABSORPTION_FRACTIONS = (1e-9, 1.0)
+ABSORPTION_TIMES_S = (1e-6, 1e6)
+
 
 def require(condition: bool, message: str) -> None:
     """Refuse a value.
@@ -46,6 +53,27 @@ def require_positive(value: float, what: str) -> None:
     )
 
 
+def require_between(value: float, low: float, high: float, what: str) -> None:
+    """Refuse a part value that is not positive, or beyond anything that can be soldered.
+
+    Raises:
+        InputError: naming what it is and the value.
+    """
+    require_positive(value, what)
+    require(low <= value <= high, f"{what} is {value!r}; it must be from {low!r} to {high!r}")
+
+
+def require_name(name: str, what: str) -> None:
+    """Refuse a name that is blank or would not fit on one line.
+
+    Raises:
+        InputError: naming what it is and the name.
+    """
+    require(
+        bool(name.strip()) and name.isprintable(), f"{what} is {name!r}; it must be a line of text"
+    )
+
+
 def require_tolerance(value: float, what: str) -> None:
     """Refuse a tolerance outside 0 (exact) to 0.9; it is a fraction, not per cent.
 
@@ -63,7 +91,7 @@ class Resistor:
     """A fixed resistor.
 
     Attributes:
-        resistance_ohms: its value, more than 0.
+        resistance_ohms: its value, within `OHMS`.
         tolerance: largest relative deviation, 0 to 0.9.
 
     Raises:
@@ -74,7 +102,7 @@ class Resistor:
     tolerance: float = 0.01
 
     def __post_init__(self) -> None:
-        require_positive(self.resistance_ohms, "resistance")
+        require_between(self.resistance_ohms, *OHMS, "resistance")
         require_tolerance(self.tolerance, "tolerance")
 
 
@@ -186,7 +214,7 @@ class Pot:
     """The time potentiometer, wired as a variable resistor.
 
     Attributes:
-        resistance_ohms: whole track, more than 0.
+        resistance_ohms: whole track, within `OHMS`.
         taper: its law.
         tolerance: largest relative deviation of the track, 0 to 0.9.
         end_ohms: what is left at rotation 0, 0 or more and less than the track.
@@ -201,7 +229,7 @@ class Pot:
     end_ohms: float = 0.0
 
     def __post_init__(self) -> None:
-        require_positive(self.resistance_ohms, "pot")
+        require_between(self.resistance_ohms, *OHMS, "pot value")
         require_tolerance(self.tolerance, "pot tolerance")
         require(
             0.0 <= self.end_ohms < self.resistance_ohms,
@@ -219,11 +247,11 @@ class Capacitor:
     """A capacitor of some kind.
 
     Attributes:
-        name: what the range switch calls it.
-        capacitance_f: farads, more than 0.
+        name: what the range switch calls it, one line.
+        capacitance_f: farads, within `FARADS`.
         kind: a row of `CAPACITOR_KINDS`.
         tolerance: largest relative deviation, 0 to 0.9.
-        insulation_ohms: measured insulation resistance; None takes the kind's typical one.
+        insulation_ohms: measured, within `INSULATION_OHMS`; None takes the kind's typical one.
         absorption: measured absorption branches; None takes the kind's typical ones.
 
     Raises:
@@ -241,13 +269,16 @@ class Capacitor:
     def __post_init__(self) -> None:
         if self.kind not in CAPACITOR_KINDS:
             raise UnknownNameError("capacitor kind", self.kind, CAPACITOR_KINDS)
-        require_positive(self.capacitance_f, f"capacitor {self.name!r} value")
+        require_name(self.name, "capacitor name")
+        require_between(self.capacitance_f, *FARADS, f"capacitor {self.name!r} value")
         require_tolerance(self.tolerance, f"capacitor {self.name!r} tolerance")
         if self.insulation_ohms is not None:
-            require_positive(self.insulation_ohms, f"capacitor {self.name!r} insulation")
+            what = f"capacitor {self.name!r} insulation"
+            require_between(self.insulation_ohms, *INSULATION_OHMS, what)
         for branch in self.absorption or ():
-            require_positive(branch.fraction, f"capacitor {self.name!r} absorption fraction")
-            require_positive(branch.time_s, f"capacitor {self.name!r} absorption time")
+            what = f"capacitor {self.name!r} absorption"
+            require_between(branch.fraction, *ABSORPTION_FRACTIONS, f"{what} fraction")
+            require_between(branch.time_s, *ABSORPTION_TIMES_S, f"{what} time")
 
     @property
     def kind_data(self) -> CapacitorKind:
@@ -281,7 +312,7 @@ class Buffer:
         bias_limit_a: the data-sheet maximum of the bias current's size.
 
     Raises:
-        InputError: if a headroom or limit is negative.
+        InputError: if a headroom or limit is negative, or anything is not finite.
     """
 
     name: str
@@ -293,13 +324,18 @@ class Buffer:
     bias_limit_a: float
 
     def __post_init__(self) -> None:
+        for what, value in (("offset", self.offset_v), ("bias", self.bias_a)):
+            require(math.isfinite(value), f"buffer {what} is {value!r}; it must be a finite number")
         for what, value in (
             ("headroom to the positive rail", self.headroom_positive_v),
             ("headroom to the negative rail", self.headroom_negative_v),
             ("largest offset", self.offset_limit_v),
             ("largest bias", self.bias_limit_a),
         ):
-            require(value >= 0, f"buffer {what} is {value!r}; it must be 0 or more")
+            require(
+                math.isfinite(value) and value >= 0,
+                f"buffer {what} is {value!r}; it must be 0 or more",
+            )
 
     @classmethod
     def of_class(cls, name: str) -> Buffer:

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import os
 import tomllib
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -18,7 +19,11 @@ from livelag.errors import FileError, InputError, UnknownNameError
 from livelag.units import format_value, parse_value
 
 DEFAULT_PRESET = "two-range-film"
-_TAPERS = ("linear", "logarithmic", "reverse logarithmic")
+_TAPERS: dict[str, Callable[..., Taper]] = {
+    "linear": Taper.linear,
+    "logarithmic": Taper.logarithmic,
+    "reverse logarithmic": Taper.reverse_logarithmic,
+}
 
 
 def presets_folder() -> Path:
@@ -45,7 +50,8 @@ def load_stage(name_or_path: str) -> GlideStage:
     if name_or_path in preset_names():
         return load_preset_file(presets_folder() / f"{name_or_path}.toml")
     path = Path(name_or_path)
-    if path.suffix == ".toml" or os.sep in name_or_path or path.exists():
+    # Unlike Path.exists, os.path.exists is quiet about names too long to be a file's.
+    if path.suffix == ".toml" or os.sep in name_or_path or os.path.exists(path):  # noqa: PTH110
         return load_preset_file(path)
     raise UnknownNameError("preset", name_or_path, preset_names())
 
@@ -59,7 +65,7 @@ def load_preset_file(path: Path) -> GlideStage:
         UnknownNameError: if it names a part class, taper or capacitor that does not exist.
     """
     try:
-        text = path.read_text(encoding="utf-8")
+        text = path.read_text(encoding="utf-8-sig")  # some editors write a byte order mark
     except UnicodeDecodeError as error:
         raise InputError(f"{path}: not a text file in UTF-8; a preset is a TOML file") from error
     except OSError as error:
@@ -76,7 +82,9 @@ def parse_stage(text: str, where: str) -> GlideStage:
     """
     try:
         content = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except RecursionError:
+        raise InputError(f"{where}: not a preset: nested too deeply") from None
+    except ValueError as error:  # tomllib's own, and a whole number of thousands of digits
         raise InputError(f"{where}: not TOML: {' '.join(str(error).split())}") from error
     return _stage(Table(content, where))
 
@@ -85,6 +93,8 @@ def _stage(top: Table) -> GlideStage:
     supply, scale = top.table("supply"), top.table("scale")
     input_side, output_side = top.table("input"), top.table("output")
     time, switch = top.table("time", required=True), top.table("switch")
+    capacitors = tuple(_capacitor(row) for row in top.tables("capacitor"))
+    known = tuple(capacitor.name for capacitor in capacitors)
     fields: dict[str, Any] = {
         "title": top.text("title", required=True),
         "about": top.text("about"),
@@ -102,8 +112,8 @@ def _stage(top: Table) -> GlideStage:
         "input_buffer": _buffer(input_side),
         "series": _resistor(time, "series", required=True),
         "pot": _pot(time.table("pot", required=True)),
-        "capacitors": tuple(_capacitor(row) for row in top.tables("capacitor")),
-        "ranges": tuple(_range(row) for row in top.tables("range")),
+        "capacitors": capacitors,
+        "ranges": tuple(_range(row, known) for row in top.tables("range")),
         "bleed": _resistor(switch, "bleed"),
         "output_buffer": _buffer(output_side),
         "output_series": _resistor(output_side, "series"),
@@ -147,7 +157,7 @@ def _taper(table: Table) -> Taper:
     if table.is_table("taper"):
         law = table.table("taper")
         if "law" in law:
-            taper = _law_taper(law, law.text("law"), law.number("middle", "", 0.15))
+            taper = _law_taper(law, law.text("law"))
         else:
             taper = law.build(
                 Taper.measured,
@@ -156,17 +166,18 @@ def _taper(table: Table) -> Taper:
             )
         law.finish()
         return taper
-    return _law_taper(table, table.text("taper", "linear"), 0.15, at="taper")
+    name = table.text("taper", "linear")
+    if name not in _TAPERS:
+        raise UnknownNameError("taper", name, _TAPERS, where=table.place("taper"))
+    return _TAPERS[name]()
 
 
-def _law_taper(table: Table, law: str, middle: float, at: str = "law") -> Taper:
-    if law == "linear":
-        return Taper.linear()
-    if law == "logarithmic":
-        return table.build(Taper.logarithmic, middle=middle)
-    if law == "reverse logarithmic":
-        return table.build(Taper.reverse_logarithmic, middle=middle)
-    raise UnknownNameError("taper", law, _TAPERS, where=table.place(at))
+def _law_taper(table: Table, law: str) -> Taper:
+    if law not in _TAPERS:
+        raise UnknownNameError("taper", law, _TAPERS, where=table.place("law"))
+    if law == "linear" or "middle" not in table:  # a linear track has no middle to choose
+        return _TAPERS[law]()
+    return table.build(_TAPERS[law], middle=table.number("middle", ""))
 
 
 def _capacitor(table: Table) -> Capacitor:
@@ -198,10 +209,15 @@ def _absorption(table: Table) -> Absorption:
     return branch
 
 
-def _range(table: Table) -> Range:
-    position = Range(
+def _range(table: Table, known: tuple[str, ...]) -> Range:
+    connects = table.texts("connects")
+    for name in connects:
+        if name not in known:
+            raise UnknownNameError("capacitor", name, known, where=table.place("connects"))
+    position = table.build(
+        Range,
         name=table.text("name", required=True),
-        connects=table.texts("connects"),
+        connects=connects,
         series=_resistor(table, "series"),
     )
     table.finish()
@@ -249,13 +265,16 @@ def save_stage(stage: GlideStage, path: Path) -> None:
     Raises:
         FileError: if the file cannot be written.
     """
+    if path.is_dir() or not path.parent.is_dir():
+        raise FileError(f"{path}: cannot be written: it must be a file in a folder that exists")
     temporary = path.with_name(f".{path.name}.part")
     try:
         temporary.write_text(stage_to_toml(stage), encoding="utf-8")
         temporary.replace(path)
     except OSError as error:
-        temporary.unlink(missing_ok=True)
         raise FileError(f"{path}: cannot be written: {error.strerror}") from error
+    finally:
+        temporary.unlink(missing_ok=True)
 
 
 def stage_to_toml(stage: GlideStage) -> str:

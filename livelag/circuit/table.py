@@ -30,7 +30,8 @@ class Table:
 
     def place(self, key: str) -> str:
         """``file: dotted.key`` for a message."""
-        return f"{self._file}: {self._path}{'.' if self._path and key else ''}{key}".rstrip(": ")
+        shown = key if key.isprintable() else repr(key)
+        return f"{self._file}: {self._path}{'.' if self._path and key else ''}{shown}".rstrip(": ")
 
     def is_table(self, key: str) -> bool:
         """Whether the key holds a table of its own."""
@@ -40,7 +41,10 @@ class Table:
         if key in self:
             return self._content[key]
         if required:
-            raise InputError(f"{self.place(key)} is missing; it must be {what}")
+            strangers = [other for other in self._content if other not in self._asked]
+            near = get_close_matches(key, strangers, n=1)
+            hint = f" (is {near[0]!r} a slip for it?)" if near else ""
+            raise InputError(f"{self.place(key)} is missing{hint}; it must be {what}")
         return None
 
     def text(self, key: str, default: str = "", *, required: bool = False) -> str:
@@ -53,7 +57,8 @@ class Table:
         if value is None:
             return default
         if not isinstance(value, str) or (required and not value.strip()):
-            raise InputError(f"{self.place(key)} is {value!r}; it must be text")
+            blank = ", and not blank" if required else ""
+            raise InputError(f"{self.place(key)} is {value!r}; it must be text{blank}")
         return value
 
     def texts(self, key: str) -> tuple[str, ...]:
@@ -106,7 +111,9 @@ class Table:
         Raises:
             InputError: if it is not a list of tables.
         """
-        value = self._get(key, "a list of tables", False) or []
+        value = self._get(key, "a list of tables", False)
+        if value is None:
+            value = []
         if not isinstance(value, list) or not all(isinstance(item, dict) for item in value):
             raise InputError(f"{self.place(key)} is {value!r}; write it as [[{key}]] tables")
         prefix = f"{self._path}{'.' if self._path else ''}{key}"
