@@ -94,9 +94,9 @@ def _draw_volts(
     low, high = axes.get_ylim()
     zero, per_octave = scale.zero_volt_note, scale.volts_per_octave
     first, last = (volts_to_note(v, zero, per_octave) for v in (low, high))
-    step = 12 if last - first > 30 else 4 if last - first > 10 else 1
-    # Octaves of C where the span is wide, so that the labels are names a player knows.
-    notes = [n for n in range(int(np.ceil(first)), int(last) + 1) if n % step == 0]
+    # Fewer names the wider the span: every semitone, the notes of a C major chord, or each C.
+    kept = {0} if last - first > 30 else {0, 4, 7} if last - first > 10 else set(range(12))
+    notes = [n for n in range(int(np.ceil(first)), int(last) + 1) if n % 12 in kept]
     names = axes.secondary_yaxis("right")
     names.set_yticks(
         [note_to_volts(float(n), zero, per_octave) for n in notes], [note_name(n) for n in notes]
@@ -119,4 +119,4 @@ def _draw_error(axes: Axes, times_s: Samples, error_cents: Samples) -> None:
     axes.set_ylabel("glide - key, cents")
     axes.set_xlabel("time, s")
     axes.grid(alpha=0.3)
-    axes.legend(loc="upper right", fontsize=8, framealpha=0.9)
+    axes.legend(loc="lower right", bbox_to_anchor=(1.0, 0.98), frameon=False, fontsize=8)
