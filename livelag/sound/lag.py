@@ -10,7 +10,12 @@ Per mode with pole s, driven by g u, over a step T (frame n at time n T):
 (1) is exact for a source held over each step, as notes are; (3) for one that runs straight
 between samples, as a digitised voltage does (first-order hold); (2) is Tustin's method.
 All three are one recursion, y[n] = d[n] + b0 u[n], d[n+1] = b1 u[n] + p y[n], which
-`scipy.signal.lfilter` runs (transposed direct form II).
+`scipy.signal.lfilter` runs (transposed direct form II) for any source. While the source is held
+its solution is a decay toward the settled mode y_inf = -g u/s, which all three share:
+
+    y[n] = y_inf + (y[0] - y_inf) p^n                                                   (4)
+
+and `Lag.hold` takes it from a table of powers, at a tenth of the recursion's time.
 
 State. Between blocks the lag holds, per mode, what frame n + 1 starts from before its source is
 known: z[n+1] for exact, (1 + sT/2) z[n] + T/2 g u[n] for bilinear, e^(sT) z[n] + F1 g u[n] for
@@ -33,25 +38,49 @@ from livelag.errors import UnknownNameError
 
 METHODS = ("exact", "bilinear", "ramp")
 _CACHED_SETTINGS = 512  # a controller's 128 positions in four ranges
+_ROW = 512  # frames per row of powers; rows count from the start of a run, never from a block
 
 
 @dataclass(frozen=True, slots=True)
 class _Filters:
-    """One setting's modes as filters.
+    """One setting's modes as filters; arrays are (driven,) unless said.
 
     Attributes:
         network: the modes they come from.
-        forward: per driven mode, (b0, b1).
-        backward: per driven mode, (1, -p).
-        state_scale: (driven,) d[n+1] per unit of the documented state.
-        silent_poles: (silent,) poles that only leak.
+        poles: p of equations 1 to 4.
+        b0: weight of the source at the same frame.
+        b1: weight of the source at the frame before.
+        state_scale: d per unit of the documented state.
+        settled: y_inf per volt of source.
+        powers: (driven, _ROW) p^0 to p^(_ROW - 1).
+        silent_poles: (silent,) poles in 1/s that only leak.
     """
 
     network: LinearNetwork
-    forward: tuple[Vector, ...]
-    backward: tuple[Vector, ...]
+    poles: Vector
+    b0: Vector
+    b1: Vector
     state_scale: Vector
+    settled: Vector
+    powers: NDArray[np.float64]
     silent_poles: Vector
+
+
+@dataclass(slots=True)
+class _Run:
+    """A held key, from the frame it began at.
+
+    Attributes:
+        key_volts: the key.
+        source: what it is worth as a source.
+        deviation: (driven,) y[0] - y_inf of equation 4.
+        frames: how long it has been held.
+    """
+
+    key_volts: float
+    source: float
+    deviation: Vector
+    frames: int = 0
 
 
 def _coefficients(
@@ -73,6 +102,14 @@ def _coefficients(
     safe = np.where(small, -1.0, x)
     f0 = step_s * np.where(small, 0.5 + x / 6 + x**2 / 24, (np.expm1(safe) - safe) / safe**2)
     return p, f0, held - f0, np.ones_like(p)
+
+
+def _powers(poles: Vector) -> NDArray[np.float64]:
+    """Rows of p^0 to p^(_ROW - 1)."""
+    factors = np.repeat(poles[:, np.newaxis], _ROW, axis=1)
+    factors[:, 0] = 1.0
+    powers: NDArray[np.float64] = np.multiply.accumulate(factors, axis=1)
+    return powers
 
 
 class Lag:
@@ -107,56 +144,61 @@ class Lag:
     def reset(self, key_volts: float = 0.0) -> None:
         """Rest on a key: every capacitor, parked ones too, holds what it settles at."""
         self._filters = self._filters_at(self.setting)
-        self._last_source = float(self.stage.source_volts(key_volts, self.setting))
+        self._source = float(self.stage.source_volts(key_volts, self.setting))
         self._enter(self.stage.settled_state(key_volts, self.setting))
-        if self.method != "exact":
-            self._modes = self._half_step(self._modes)
-
-    def _half_step(self, settled: Vector) -> Vector:
-        """The documented state of a method that waits for the next source, from settled modes."""
-        network = self._filters.network
-        n = network.driven_count
-        waiting = settled.copy()
-        for mode in range(n):
-            b0 = self._filters.forward[mode][0]
-            # y = d + b0 u at rest, so d = y - b0 u.
-            d = settled[mode] - b0 * self._last_source
-            waiting[mode] = d / self._filters.state_scale[mode]
-        return waiting
+        # At rest y = y_inf, so the state that waits for the next source is y_inf - b0 u.
+        self._delay = self._filters.settled * self._source - self._filters.b0 * self._source
 
     def _filters_at(self, setting: Setting) -> _Filters:
         found = self._cache.get(setting)
         if found is None:
-            network = self.stage.network(setting)
-            n = network.driven_count
-            p, b0, b1, scale = _coefficients(self.method, network.poles[:n], self._step_s)
-            g = network.drive[:n]
-            found = _Filters(
-                network,
-                tuple(np.array(pair) for pair in zip(b0 * g, b1 * g, strict=True)),
-                tuple(np.array((1.0, -pole)) for pole in p),
-                scale,
-                network.poles[n:],
-            )
             if len(self._cache) >= _CACHED_SETTINGS:
                 del self._cache[next(iter(self._cache))]
-            self._cache[setting] = found
+            found = self._cache[setting] = self._make_filters(self.stage.network(setting))
         return found
+
+    def _make_filters(self, network: LinearNetwork) -> _Filters:
+        n = network.driven_count
+        poles, drive = network.poles[:n], network.drive[:n]
+        p, b0, b1, scale = _coefficients(self.method, poles, self._step_s)
+        return _Filters(
+            network=network,
+            poles=p,
+            b0=b0 * drive,
+            b1=b1 * drive,
+            state_scale=scale,
+            settled=-drive / poles,
+            powers=_powers(p),
+            silent_poles=network.poles[n:],
+        )
 
     def _enter(self, state_v: Vector) -> None:
         """Take up a state in volts at the present setting."""
-        self._modes = self._filters.network.to_modes @ state_v
+        network = self._filters.network
+        modes = network.to_modes @ state_v
+        self._delay = modes[: network.driven_count] * self._filters.state_scale
+        self._silent = modes[network.driven_count :]
         self._frames_since = 0
+        self._run: _Run | None = None
+
+    def _end_run(self) -> None:
+        """Bring the recursion up to where the held key has taken it."""
+        run, filters = self._run, self._filters
+        if run is not None:
+            y = filters.settled * run.source + run.deviation * filters.poles**run.frames  # eq. 4
+            self._delay = y - filters.b0 * run.source
+            self._run = None
 
     @property
     def state_v(self) -> Vector:
         """(states,) volts that the next frame starts from; see the module's text."""
+        self._end_run()
         network = self._filters.network
-        modes = self._modes.copy()
         # Silent modes decay from the last move in one go, so that block sizes cannot matter.
         elapsed = self._frames_since * self._step_s
-        modes[network.driven_count :] *= np.exp(self._filters.silent_poles * elapsed)
-        return network.to_volts @ modes + network.source_to_volts * self._last_source
+        silent = self._silent * np.exp(self._filters.silent_poles * elapsed)
+        modes = np.concatenate((self._delay / self._filters.state_scale, silent))
+        return network.to_volts @ modes + network.source_to_volts * self._source
 
     def move(self, setting: Setting) -> None:
         """Set pot, range and bypass from the next frame on; charge is shared as the switch closes.
@@ -179,8 +221,44 @@ class Lag:
         state = self.stage.wiring.jump(self.state_v, self.setting.range_index, float(bus))
         self._enter(state)
 
+    def hold(self, key_volts: float, frames: int) -> NDArray[np.float64]:
+        """Run the stage with a key held, by equation 4.
+
+        Args:
+            key_volts: the key, in volts.
+            frames: how many, 1 or more.
+
+        Returns:
+            (frames,) glide volts at the load.
+        """
+        run = self._run
+        if run is None or run.key_volts != key_volts:
+            run = self._begin_run(key_volts)
+        filters = self._filters
+        network = filters.network
+        first, last = run.frames // _ROW, (run.frames + frames - 1) // _ROW
+        rows = np.arange(first, last + 1) * _ROW
+        settled = network.readout[: network.driven_count] @ filters.settled + network.feedthrough
+        bus = np.full((len(rows), _ROW), settled * run.source)
+        for mode, pole in enumerate(filters.poles):
+            weight = network.readout[mode] * run.deviation[mode]
+            if weight:
+                bus += (weight * pole**rows)[:, np.newaxis] * filters.powers[mode]
+        start = run.frames - first * _ROW
+        run.frames += frames
+        self._frames_since += frames
+        return self.stage.output_volts(bus.ravel()[start : start + frames])
+
+    def _begin_run(self, key_volts: float) -> _Run:
+        self._end_run()
+        filters = self._filters
+        source = self._source = float(self.stage.source_volts(key_volts, self.setting))
+        first = self._delay + filters.b0 * source
+        self._run = _Run(key_volts, source, first - filters.settled * source)
+        return self._run
+
     def process(self, key_volts: NDArray[np.float64]) -> NDArray[np.float64]:
-        """Run the stage over a block.
+        """Run the stage over any source, by recursion.
 
         Args:
             key_volts: (frames,) volts; frame n holds until frame n + 1 (exact), is the end of a
@@ -191,21 +269,20 @@ class Lag:
         """
         if len(key_volts) == 0:
             return np.zeros(0)
+        self._end_run()
         source = self.stage.source_volts(key_volts, self.setting)
         filters = self._filters
         network = filters.network
-        bus: NDArray[np.float64] = (
-            source if network.feedthrough else np.zeros(len(key_volts), np.float64)
-        )
+        bus: NDArray[np.float64] = network.feedthrough * source
         for mode in range(network.driven_count):
-            scale = filters.state_scale[mode]
-            zi = np.array((self._modes[mode] * scale,))
-            z, zf = lfilter(filters.forward[mode], filters.backward[mode], source, zi=zi)
-            self._modes[mode] = zf[0] / scale
-            weight = network.readout[mode]
-            if weight:
-                z *= weight
-                bus += z
-        self._last_source = float(source[-1])
+            z, end = lfilter(
+                (filters.b0[mode], filters.b1[mode]),
+                (1.0, -filters.poles[mode]),
+                source,
+                zi=self._delay[mode : mode + 1],
+            )
+            self._delay[mode] = end[0]
+            bus += network.readout[mode] * z
+        self._source = float(source[-1])
         self._frames_since += len(key_volts)
         return self.stage.output_volts(bus)

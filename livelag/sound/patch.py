@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import NamedTuple
+from typing import NamedTuple, TypeAlias
 
 import numpy as np
 from mido import Message
@@ -24,7 +24,7 @@ from livelag.sound.parameters import PARAMETERS, Change, Value, parameter
 from livelag.units import dbfs_to_amplitude, note_to_hz
 
 Samples = NDArray[np.float64]
-Event = Message | Change
+Event: TypeAlias = "Message | Change"
 
 
 class PatchOutput(NamedTuple):
@@ -228,7 +228,7 @@ class Patch:
         if stop == start:
             return
         self._key[start:stop] = self._key_volts
-        self._glide[start:stop] = self._lag.process(self._key[start:stop])
+        self._glide[start:stop] = self._lag.hold(self._key_volts, stop - start)
         # The gains wait as long as the oscillator does.
         self._level.fill(self._gains[self.latency_frames + start : self.latency_frames + stop])
 

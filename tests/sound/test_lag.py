@@ -73,7 +73,7 @@ moves = st.lists(
 def test_blocks_never_matter(preset, method, cuts, moves):
     stage = load_stage(preset)
 
-    def run(extra_cuts):
+    def run(extra_cuts, held):
         lag = Lag(stage, RATE, method)
         keys = np.zeros(400)
         for frame, *_, volts in sorted(moves):
@@ -86,10 +86,17 @@ def test_blocks_never_matter(preset, method, cuts, moves):
         for left, right in pairwise(edges):
             if left in at:
                 lag.move(at[left])
-            parts.append(lag.process(keys[left:right]))
+            if not held:
+                parts.append(lag.process(keys[left:right]))
+                continue
+            bounds = [left, *(np.flatnonzero(np.diff(keys[left:right])) + left + 1), right]
+            parts += [lag.hold(keys[a], b - a) for a, b in pairwise(bounds)]
         return np.concatenate(parts)
 
-    assert np.array_equal(run([]), run(cuts))
+    assert np.array_equal(run([], False), run(cuts, False))
+    assert np.array_equal(run([], True), run(cuts, True))
+    # Two ways to the same samples: the recursion, and the closed form for a held key.
+    assert np.abs(run([], True) - run(cuts, False)).max() < 1e-11
 
 
 def test_flipping_the_range_shares_the_charge():
