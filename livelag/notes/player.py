@@ -71,6 +71,7 @@ class Player:
         self.settings = settings or PlayerSettings()
         self._pick = _PICKS[self.settings.priority]
         self._legato_only = self.settings.glide == "legato only"
+        self._heed_switch = self.settings.heed_portamento_switch
         self._handlers: dict[str, Callable[[Message], Moment | None]] = {
             "note_on": self._note_on,
             "note_off": self._note_off,
@@ -139,7 +140,8 @@ class Player:
 
     def _current(self) -> tuple[float, bool, int, bool, int | None]:
         bypassed = not self._forced and (
-            not self._portamento or (self._legato_only and not self._legato)
+            (self._heed_switch and not self._portamento)
+            or (self._legato_only and not self._legato)
         )
         volts = self._note_volts + self._bend_volts
         return volts, self._note is not None, self._velocity, bypassed, self._note

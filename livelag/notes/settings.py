@@ -48,6 +48,7 @@ class PlayerSettings:
         pot_controller: controller that turns the time pot. If it is below 32, its fine half is
             32 above it. 5 is portamento time.
         range_controller: controller that moves the range switch.
+        heed_portamento_switch: whether 65 (and 121, which turns it off) can bypass the glide.
 
     Raises:
         UnknownNameError: if a priority or glide does not exist.
@@ -61,6 +62,7 @@ class PlayerSettings:
     glide: str = "always"
     pot_controller: int = 5
     range_controller: int = 80  # MIDI 1.0: 80 to 83 are general purpose, one byte each
+    heed_portamento_switch: bool = True
 
     def __post_init__(self) -> None:
         if not (math.isfinite(self.volts_per_octave) and self.volts_per_octave > 0.0):

@@ -336,3 +336,11 @@ def test_a_moment_is_told_exactly_when_the_state_moved(settings, messages):
             assert player.now == steady
             struck = message.type == "note_on" and message.velocity > 0
             assert steady != before or struck or moment != steady
+
+
+def test_the_portamento_switch_can_be_overruled():
+    player = Player(PlayerSettings(heed_portamento_switch=False))
+    player.handle(Message("control_change", control=65, value=0))
+    player.handle(Message("control_change", control=121, value=0))
+    moment = player.handle(Message("note_on", note=60, velocity=90))
+    assert not moment.bypassed
