@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-import os
+import contextlib
+import secrets
 from pathlib import Path
 from types import TracebackType
 
@@ -23,19 +24,30 @@ class WholeFiles:
         return self
 
     def temporary(self, path: Path) -> Path:
-        """A name beside ``path`` to write to, with the same suffix.
+        """An empty file beside ``path`` to write to, with the same suffix.
 
         Raises:
-            FileError: if the folder is missing or cannot be written to, or ``path`` is a folder.
+            FileError: if the folder is missing or cannot be written to, or ``path`` is a folder
+                or no name that the system takes.
         """
         folder = path.parent
-        if not folder.is_dir():
-            raise FileError(f"{path}: folder {str(folder)!r} does not exist; make it first")
-        if path.is_dir():
-            raise FileError(f"{path}: is a folder; name a file")
-        if not os.access(folder, os.W_OK):
-            raise FileError(f"{path}: folder {str(folder)!r} cannot be written to")
-        temporary = folder / f".{path.stem}.{os.getpid()}.part{path.suffix}"
+        try:
+            if not folder.is_dir():
+                raise FileError(f"{path}: folder {str(folder)!r} does not exist; make it first")
+            if path.is_dir():
+                raise FileError(f"{path}: is a folder; name a file")
+        except OSError as error:
+            if isinstance(error, FileError):
+                raise
+            raise cannot_write(path, error) from error
+        # A short name, so that whatever the system takes for the file it takes for this one.
+        temporary = folder / f".livelag-{secrets.token_hex(6)}.part{path.suffix}"
+        try:
+            # Made now: permissions alone do not tell whether a folder can be written to.
+            temporary.open("xb").close()
+        except OSError as error:
+            where = f"{path}: folder {str(folder)!r} cannot be written to"
+            raise FileError(f"{where}: {error.strerror}") from error
         self._pending.append((temporary, path))
         return temporary
 
@@ -53,9 +65,15 @@ class WholeFiles:
             raise cannot_write(path, failure) from failure
         finally:
             for temporary, _ in self._pending:
-                temporary.unlink(missing_ok=True)
+                with contextlib.suppress(OSError):
+                    temporary.unlink()
         if isinstance(error, OSError) and not isinstance(error, FileError) and self._pending:
-            raise cannot_write(self._pending[0][1], error) from error
+            raise cannot_write(self._meant(error), error) from error
+
+    def _meant(self, error: OSError) -> Path:
+        """The file that a failure was about: the one it names, or else the first."""
+        named = [path for temporary, path in self._pending if str(temporary) == error.filename]
+        return (named or [self._pending[0][1]])[0]
 
 
 def cannot_write(path: Path, error: OSError) -> FileError:

@@ -85,12 +85,12 @@ def _finite(value: Any) -> Any:
 
 
 def console() -> Console:
-    """The console that tables go to: as wide as they need where nobody watches."""
+    """The console that tables go to, which shows names and titles as they are written."""
     from rich.console import Console
 
     if sys.stdout.isatty():
-        return Console()
-    return Console(width=120)
+        return Console(markup=False, emoji=False)
+    return Console(width=120, markup=False, emoji=False)
 
 
 def new_table(*columns: str, title: str = "", right: Sequence[str] = ()) -> Table:

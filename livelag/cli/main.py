@@ -7,10 +7,12 @@ from __future__ import annotations
 
 import argparse
 import importlib
+import io
 import os
 import signal
 import sys
 from collections.abc import Sequence
+from pathlib import Path
 from types import FrameType
 
 import livelag
@@ -50,11 +52,14 @@ def build_parser() -> argparse.ArgumentParser:
 
 def run(arguments: Sequence[str] | None = None) -> int:
     """Run a command line and return its exit status."""
-    args = build_parser().parse_args(arguments)
-    _end_on_terminate()
     try:
-        args.run(args)
-        sys.stdout.flush()
+        _end_on_terminate()
+        _make_output_safe()
+        try:
+            args = build_parser().parse_args(arguments)
+            args.run(args)
+        finally:
+            sys.stdout.flush()
     except LivelagError as error:
         print(f"livelag: {' '.join(str(error).split())}", file=sys.stderr)
         return AT_FAULT
@@ -62,10 +67,28 @@ def run(arguments: Sequence[str] | None = None) -> int:
         print("livelag: interrupted; nothing was left half-written", file=sys.stderr)
         return INTERRUPTED
     except BrokenPipeError:
-        # Whoever read standard output has gone; keep Python from complaining at exit.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _drop_output()  # whoever read standard output has gone
+        return AT_FAULT
+    except OSError as error:
+        _drop_output()
+        place = error.filename or "standard output"
+        print(f"livelag: {place}: {error.strerror or error}", file=sys.stderr)
         return AT_FAULT
     return DONE
+
+
+def _make_output_safe() -> None:
+    """Have a standard output even where it is closed, and one that takes any file name."""
+    if sys.stdout is None:
+        sys.stdout = Path(os.devnull).open("w", encoding="utf-8")  # noqa: SIM115 - until the end
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
+
+
+def _drop_output() -> None:
+    """Keep Python from complaining at exit about what it could not write."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _end_on_terminate() -> None:

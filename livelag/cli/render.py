@@ -10,7 +10,6 @@ from livelag.cli.common import (
     add_command,
     add_preset,
     console,
-    load_preset,
     new_table,
     refuse,
     seconds,
@@ -45,7 +44,9 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
     notes.add_argument("--tracks", metavar="1,2", help="play these tracks only, from 1")
     notes.add_argument("--priority", metavar="RULE", help="which held key sounds: last, low, high")
     notes.add_argument(
-        "--retrigger", action="store_true", help="restart the level at every note, not only detached"
+        "--retrigger",
+        action="store_true",
+        help="restart the level at every note, legato too",
     )
     notes.add_argument(
         "--legato-only", action="store_true", help="glide only between overlapping notes"
@@ -62,7 +63,10 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
     )
     sound.add_argument("--level", type=float, metavar="DBFS", help="peak level; default -18")
     sound.add_argument(
-        "--velocity", type=float, metavar="X", help="how far velocity sets the level, 0 (default) to 1"
+        "--velocity",
+        type=float,
+        metavar="X",
+        help="how far velocity sets the level, 0 to 1; default 0",
     )
     sound.add_argument("--rate", type=int, default=48000, metavar="HZ", help="default 48000")
     sound.add_argument("--depth", default="24", metavar="BITS", help="16, 24 (default) or float")
@@ -89,23 +93,28 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
 def run(args: argparse.Namespace) -> None:
     """Render one file or a numbered set."""
     _refuse_contradictions(args)
+    from livelag.circuit.presets import load_stage
     from livelag.cli.render_job import RenderJob
 
-    stage = load_preset(args)
-    job = RenderJob.from_arguments(args, stage)
-    for sentence in job.song.warnings:
+    job = RenderJob.from_arguments(args, load_stage(args.preset))
+    _render(args, job)
+    # Said last, so that a rendering that fails says one line only.
+    for sentence in (*job.stage.warnings(), *job.song.warnings):
         warn(sentence)
+
+
+def _render(args: argparse.Namespace, job: RenderJob) -> None:
     if args.rotations is not None or args.ranges is not None:
         from livelag.cli.render_set import render_set
 
         render_set(args, job)
         return
-    out = Path(args.out or f"{Path(args.preset).stem}-{job.song_name}.wav")
+    out = Path(f"{Path(args.preset).stem}-{job.song_name}.wav" if args.out is None else args.out)
     answer = job.run(
         out,
-        cv=Path(args.cv) if args.cv else None,
-        cv_rate=args.cv_rate or 1000.0,
-        picture=Path(args.picture) if args.picture else None,
+        cv=None if args.cv is None else Path(args.cv),
+        cv_rate=1000.0 if args.cv_rate is None else args.cv_rate,
+        picture=None if args.picture is None else Path(args.picture),
         show_progress=not args.json,
     )
     if args.json:
@@ -134,6 +143,10 @@ def _refuse_contradictions(args: argparse.Namespace) -> None:
         for option in ("cv", "picture"):
             if getattr(args, option) is not None:
                 refuse(args, f"--{option} is for one rendering, not for a set")
+        if args.bypass:
+            refuse(args, "--bypass makes every rendering of a set the same")
+    if args.bypass and args.legato_only:
+        refuse(args, "--legato-only changes nothing with --bypass")
 
 
 def show_rendered(job: RenderJob, answer: dict[str, Any]) -> None:

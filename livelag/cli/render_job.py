@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import os
 from contextlib import ExitStack
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -20,7 +21,7 @@ from livelag.notes.player import PlayerSettings
 from livelag.sound.parameters import Value
 from livelag.sound.patch import Patch
 from livelag.sound.render import Sink, check_rate, frames_for, render
-from livelag.sound.soundfile_out import SoundFileOut, check_format
+from livelag.sound.soundfile_out import DEPTHS, SoundFileOut, check_format
 from livelag.units import amplitude_to_dbfs
 
 METHODS = ("exact", "bilinear")
@@ -62,9 +63,13 @@ class RenderJob:
     def __post_init__(self) -> None:
         if self.method not in METHODS:
             raise UnknownNameError("method", self.method, METHODS)
+        if self.depth not in DEPTHS:
+            raise UnknownNameError("depth", self.depth, DEPTHS)
         check_rate(self.rate_hz)
         if self.full_scale_v is not None and not 0.1 <= self.full_scale_v <= 100.0:
-            raise InputError(f"full scale is {self.full_scale_v:g} V; it must be 0.1 to 100 V")
+            raise InputError(
+                f"--full-scale-volts is {self.full_scale_v:g} V; it must be 0.1 to 100 V"
+            )
         self.patch()
 
     @classmethod
@@ -84,14 +89,14 @@ class RenderJob:
             )
             name = Path(args.midi).stem
         else:
-            chosen = phrase(args.phrase or DEFAULT_PHRASE)
+            chosen = phrase(DEFAULT_PHRASE if args.phrase is None else args.phrase)
             name = chosen.name
             song = Song(name, chosen.messages, chosen.duration_s, chosen.note_count)
         parameters: dict[str, Value] = {
             key: value
             for key, value in (
                 ("rotation", args.rotation),
-                ("range", float(stage.range_index(args.range)) if args.range else None),
+                ("range", None if args.range is None else float(stage.range_index(args.range))),
                 ("bypass", 1.0 if args.bypass else None),
                 ("waveform", args.waveform),
                 ("pulse_width", args.pulse_width),
@@ -101,11 +106,13 @@ class RenderJob:
             if value is not None
         }
         settings = PlayerSettings(
-            priority=args.priority or "last",
+            priority="last" if args.priority is None else args.priority,
             retrigger=args.retrigger,
             glide="legato only" if args.legato_only else "always",
         )
-        full_scale = (args.full_scale_volts or DEFAULT_FULL_SCALE_V) if args.stereo else None
+        full_scale = args.full_scale_volts
+        if args.stereo and full_scale is None:
+            full_scale = DEFAULT_FULL_SCALE_V
         return cls(
             stage, song, name, settings, parameters, args.method, args.rate, args.depth, full_scale
         )
@@ -162,12 +169,16 @@ class RenderJob:
         frames = frames_for(self.song.duration_s, self.rate_hz)
         channels = 1 if self.full_scale_v is None else 2
         check_format(out, self.depth, channels, self.rate_hz, frames)
+        if cv is not None:
+            from livelag.report.curve import check_curve
+
+            check_curve(cv)
         if picture is not None:
             from livelag.report.figures import check_picture
 
             check_picture(picture)
         if not 0.001 <= cv_rate <= self.rate_hz:
-            raise InputError(f"cv rate is {cv_rate:g} Hz; it must be 0.001 to {self.rate_hz} Hz")
+            raise InputError(f"--cv-rate is {cv_rate:g} Hz; it must be 0.001 to {self.rate_hz} Hz")
         _refuse_same_file([p for p in (out, cv, picture) if p is not None])
         patch = self.patch()
         with WholeFiles() as files, ExitStack() as open_files:
@@ -240,7 +251,8 @@ class RenderJob:
             )
         if answer["unglided_notes"] and self.player_settings.glide == "always":
             found.append(
-                f"the music turned the glide off (controller 65) for {answer['unglided_notes']} notes"
+                f"the music turned the glide off (controller 65) for "
+                f"{answer['unglided_notes']} notes"
             )
         if answer["clamped_frames"]:
             found.append(
@@ -273,8 +285,11 @@ class _SoundSink:
 
 
 def _refuse_same_file(paths: list[Path]) -> None:
-    if len({path.absolute() for path in paths}) < len(paths):
-        raise InputError(f"{paths[0]}: two outputs name the same file")
+    seen = set()
+    for path in paths:
+        if (real := os.path.realpath(path)) in seen:
+            raise InputError(f"{path}: is named for two outputs; give each a file of its own")
+        seen.add(real)
 
 
 def _number_set(text: str | None, option: str) -> set[int] | None:

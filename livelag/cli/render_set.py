@@ -8,13 +8,16 @@ import multiprocessing
 import shutil
 import signal
 import tempfile
+from collections.abc import Iterator
 from concurrent.futures import ProcessPoolExecutor
+from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
 from livelag.cli.common import console, new_table, seconds, show_json, warn
 from livelag.cli.render_job import RenderJob
-from livelag.errors import FileError, InputError
+from livelag.errors import FileError, InputError, LivelagError
 from livelag.files import cannot_write
 
 DEFAULT_FOLDER = "livelag-set"
@@ -24,7 +27,7 @@ INDEX_COLUMNS = ("number", "file", "range", "rotation", "time_constant_s", "seco
 
 def render_set(args: argparse.Namespace, job: RenderJob) -> None:
     """Render every range asked for at every rotation asked for, whole or not at all."""
-    folder = Path(args.out or DEFAULT_FOLDER)
+    folder = Path(DEFAULT_FOLDER if args.out is None else args.out)
     settings = [(i, r) for i in _range_indices(args, job) for r in _rotations(args, job)]
     jobs = [job.at(index, rotation) for index, rotation in settings]
     answers = _render_all(jobs, folder)
@@ -82,8 +85,8 @@ def _render_all(jobs: list[RenderJob], folder: Path) -> list[dict[str, Any]]:
         for path in work.iterdir():
             path.replace(folder / path.name)
     except OSError as error:
-        if isinstance(error, FileError):
-            raise
+        if isinstance(error, FileError):  # it names a file in the folder that nobody asked for
+            raise FileError(str(error).replace(str(work), str(folder))) from error
         raise cannot_write(folder, error) from error
     finally:
         shutil.rmtree(work, ignore_errors=True)
@@ -102,11 +105,17 @@ def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any
     if len(jobs) == 1:
         return [jobs[0].run(paths[0])]
     # Spawned, not forked: threads of the parent must not be copied half-way.
-    pool = ProcessPoolExecutor(
-        mp_context=multiprocessing.get_context("spawn"), initializer=_leave_interrupts_to_parent
-    )
+    pool = ProcessPoolExecutor(mp_context=multiprocessing.get_context("spawn"))
     try:
-        return list(pool.map(RenderJob.run, jobs, paths))
+        with _interrupts_left_to_parent():
+            futures = [
+                pool.submit(RenderJob.run, job, path) for job, path in zip(jobs, paths, strict=True)
+            ]
+        return [future.result() for future in futures]
+    except BrokenProcessPool as error:
+        raise LivelagError(
+            "a rendering process was ended from outside, perhaps for want of memory"
+        ) from error
     except BaseException:
         for process in list((pool._processes or {}).values()):
             process.terminate()
@@ -115,8 +124,14 @@ def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any
         pool.shutdown(cancel_futures=True)
 
 
-def _leave_interrupts_to_parent() -> None:
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
+@contextmanager
+def _interrupts_left_to_parent() -> Iterator[None]:
+    """Start processes that ignore Ctrl-C from their very first moment, as they inherit that."""
+    ours = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, ours)
 
 
 def _write_index(path: Path, answers: list[dict[str, Any]]) -> None:

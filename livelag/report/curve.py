@@ -9,11 +9,23 @@ import numpy as np
 from numpy.typing import NDArray
 
 from livelag.circuit.stage import Scale
+from livelag.errors import UnknownNameError
 from livelag.units import volts_to_hz
 
 Samples = NDArray[np.float64]
 
 CSV_HEADER = "time_s,key_volts,glide_volts,pitch_hz\n"
+CSV_SUFFIX = ".csv"
+
+
+def check_curve(path: Path) -> None:
+    """Refuse a pitch curve whose suffix is not that of its format.
+
+    Raises:
+        UnknownNameError: naming the suffix that exists.
+    """
+    if path.suffix.lower() != CSV_SUFFIX:
+        raise UnknownNameError("pitch curve suffix", path.suffix, [CSV_SUFFIX], where=str(path))
 
 
 class _Sampler:
@@ -31,7 +43,7 @@ class _Sampler:
         frames = np.rint(np.arange(self._next, last + 1) * self._spacing).astype(np.intp)
         inside = frames[frames < end]
         self._next += len(inside)
-        picked = inside - self._start
+        picked: NDArray[np.intp] = inside - self._start
         self._start = end
         return picked
 
@@ -50,6 +62,7 @@ class CurveCsv:
         self._rate_hz = rate_hz
         self._scale = scale
         self._start = 0
+        self._path = path
         self._file = path.open("w", encoding="ascii", newline="")
         self._file.write(CSV_HEADER)
 
@@ -62,10 +75,21 @@ class CurveCsv:
         error: BaseException | None,
         trace: TracebackType | None,
     ) -> None:
-        self._file.close()
+        try:
+            self._file.close()
+        except OSError as failure:
+            raise self._failure(failure) from failure
+
+    def _failure(self, error: OSError) -> OSError:
+        """The same failure with the file's name, which a failed write does not tell."""
+        return OSError(error.errno, error.strerror, str(self._path))
 
     def write(self, audio: Samples, key_volts: Samples, glide_volts: Samples) -> None:
-        """Take the next block."""
+        """Take the next block.
+
+        Raises:
+            OSError: if the disk is full or gone.
+        """
         picked = self._sampler.pick(len(key_volts))
         glide = glide_volts[picked]
         pitch = volts_to_hz(glide, self._scale.zero_volt_note, self._scale.volts_per_octave)
@@ -73,7 +97,10 @@ class CurveCsv:
         rows = zip(
             times.tolist(), key_volts[picked].tolist(), glide.tolist(), pitch.tolist(), strict=True
         )
-        self._file.writelines(map("%.9f,%.12g,%.12g,%.9g\n".__mod__, rows))
+        try:
+            self._file.writelines(map("%.9f,%.12g,%.12g,%.9g\n".__mod__, rows))
+        except OSError as error:
+            raise self._failure(error) from error
         self._start += len(key_volts)
 
 

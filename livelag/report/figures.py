@@ -5,6 +5,7 @@ Lines differ by dash and width as well as by colour, so that a picture reads in 
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -45,14 +46,22 @@ def new_figure(width_in: float, height_in: float) -> Figure:
 
 
 def save_figure(figure: Figure, path: Path) -> None:
-    """Write a figure in the format of its suffix, without the date, so that it repeats.
+    """Write a figure in the format of its suffix, without date or random names, so it repeats.
 
     Raises:
         OSError: if the file cannot be written.
     """
+    from matplotlib import rc_context
+
     suffix = path.suffix.lower()
     metadata = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}}.get(suffix)
-    figure.savefig(path, dpi=144, metadata=metadata)
+    with rc_context({"svg.hashsalt": "livelag"}), warnings.catch_warnings():
+        # A title may hold signs that no font at hand has; they show as boxes.
+        warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
+        try:
+            figure.savefig(path, dpi=144, metadata=metadata)
+        except OSError as error:
+            raise OSError(error.errno, error.strerror, str(path)) from error
 
 
 def curve_figure(
@@ -70,7 +79,7 @@ def curve_figure(
     """
     figure = new_figure(10.0, 6.0)
     upper, lower = figure.subplots(2, 1, sharex=True, height_ratios=[2, 1])
-    figure.suptitle(f"{title}\n{note}", fontsize=11)
+    figure.suptitle(f"{title}\n{note}", fontsize=11, parse_math=False)  # a $ is a $
     _draw_volts(upper, times_s, key_volts, glide_volts, scale)
     _draw_error(lower, times_s, volts_to_cents(glide_volts - key_volts, scale.volts_per_octave))
     lower.set_xlim(float(times_s[0]), float(times_s[-1]))

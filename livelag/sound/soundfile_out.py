@@ -7,6 +7,8 @@ which makes the rounding error independent of the signal (Lipshitz, Wannamaker a
 
 from __future__ import annotations
 
+import errno
+import os
 from pathlib import Path
 from types import TracebackType
 from typing import Any
@@ -53,13 +55,14 @@ class SoundFileOut:
 
         self._path = path
         self._depth = depth
+        self._errors: tuple[type[Exception], ...] = (soundfile.LibsndfileError, AssertionError)
         self._dither = np.random.default_rng(_DITHER_SEED)
         try:
             self._file: Any = soundfile.SoundFile(
                 path, "w", rate_hz, channels, DEPTHS[depth], format=FORMATS[path.suffix.lower()]
             )
         except soundfile.LibsndfileError as error:
-            raise OSError(str(error)) from error
+            raise self._failure() from error
 
     def __enter__(self) -> SoundFileOut:
         return self
@@ -70,7 +73,12 @@ class SoundFileOut:
         error: BaseException | None,
         trace: TracebackType | None,
     ) -> None:
-        self._file.close()
+        try:
+            self._file.close()
+        except self._errors as failure:
+            raise self._failure() from failure
+        if kind is None and self._depth == "float":
+            _clear_time_stamp(self._path)
 
     def write(self, samples: NDArray[np.float64]) -> None:
         """Append a block.
@@ -85,10 +93,21 @@ class SoundFileOut:
         before = self._file.frames
         try:
             self._file.write(block)
-        except (RuntimeError, AssertionError) as error:
-            raise OSError(f"{error or 'the disk is full'}") from error
+        except self._errors as error:
+            raise self._failure() from error
         if self._file.frames - before != len(samples):
-            raise OSError("the disk is full")
+            raise self._failure()
+
+    def _failure(self) -> OSError:
+        """Why the system will take no more; libsndfile tells no more than that it failed."""
+        try:
+            with self._path.open("ab") as file:
+                file.write(bytes(2**16))
+                file.flush()
+                os.fsync(file.fileno())
+        except OSError as error:
+            return OSError(error.errno, error.strerror, str(self._path))
+        return OSError(errno.EIO, "the system would not take all of it", str(self._path))
 
     def _integers(self, samples: NDArray[np.float64]) -> NDArray[Any]:
         bits = int(self._depth)
@@ -99,3 +118,16 @@ class SoundFileOut:
         if bits == 16:
             return steps.astype(np.int16)
         return steps.astype(np.int32) << 8  # libsndfile takes the top 24 of 32 bits
+
+
+def _clear_time_stamp(path: Path) -> None:
+    """Blank the time of day in the PEAK chunk of a float WAV, so that a render repeats.
+
+    The chunk holds its name, its size, a version and the time in seconds, four bytes each.
+    """
+    with path.open("r+b") as file:
+        head = file.read(256)
+        at = head.find(b"PEAK")
+        if 0 < at < head.find(b"data"):
+            file.seek(at + 12)
+            file.write(bytes(4))
