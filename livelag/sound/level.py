@@ -47,6 +47,11 @@ class Level:
         x = self._done / frames
         return self._from + (target - self._from) * x * x * (3.0 - 2.0 * x)
 
+    @property
+    def at_rest(self) -> bool:
+        """Whether the gain is zero and stays there."""
+        return not self._plan and self._from == 0.0
+
     def open(self, gain: float, *, retrigger: bool = False) -> None:
         """Ramp up (or over) to a gain; with ``retrigger`` by way of silence."""
         first = [(0.0, self._retrigger)] if retrigger and self.gain > 0.0 else []

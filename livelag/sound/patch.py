@@ -183,41 +183,71 @@ class Patch:
         elif self._prepared:
             self._lag.move(self._setting())
 
-    def process(self, frames: int, events: Sequence[tuple[int, Event]] = ()) -> PatchOutput:
+    def begin(self, key_volts: float, controls: Sequence[Message] = ()) -> None:
+        """Start a piece: controls as they stand before it, and the stage at rest on a key.
+
+        Args:
+            key_volts: the key rested on.
+            controls: messages that set the pot, the range, pedals and bend; no notes.
+        """
+        self.reset(key_volts)
+        for message in controls:
+            moment = self._player.handle(message)
+            if moment is not None:
+                self._follow(moment)
+        self._key_volts = key_volts
+        self._lag.reset(key_volts)
+
+    @property
+    def silent(self) -> bool:
+        """Whether nothing sounds and nothing is on its way out."""
+        waiting = self._gains[: self.latency_frames]
+        return not self._gate and self._level.at_rest and not waiting.any()
+
+    def process(
+        self,
+        frames: int,
+        events: Sequence[tuple[int, Event]] = (),
+        outside_volts: Samples | None = None,
+    ) -> PatchOutput:
         """Make the next block.
 
         Args:
             frames: how many, 1 to ``max_frames``.
             events: (frame, message or change) in order of their frames, each 0 to frames - 1.
+            outside_volts: (frames,) a control voltage from outside to glide instead of the keys'.
 
         Raises:
             InputError: if the block is longer than prepared for, or a change cannot be made.
         """
         if frames > self._max_frames:
             raise InputError(f"block is {frames} frames; prepared for {self._max_frames}")
-        # The oscillator takes a new shape at the start of a block of its own only.
+        self._outside_volts = outside_volts
         self._sounded = 0
         pieces: list[Samples] = []
         done = 0
         for frame, event in events:
+            moment = None
+            if not isinstance(event, Change):
+                moment = self._player.handle(event)
+                if moment is None:
+                    continue
             if frame > done:
                 self._advance(done, frame)
                 done = frame
-            if isinstance(event, Change):
-                if event.name in ("waveform", "pulse_width"):
-                    self._sound(done, pieces)
-                self.set(event.name, event.value)
-            else:
-                moment = self._player.handle(event)
-                if moment is not None:
-                    self._follow(moment)
+            if moment is not None:
+                self._follow(moment)
+                continue
+            if event.name in ("waveform", "pulse_width"):
+                # The oscillator takes a new shape at the start of a call of its own only.
+                self._sound(done, pieces)
+            self.set(event.name, event.value)
         self._advance(done, frames)
         self._sound(frames, pieces)
         audio = pieces[0] if len(pieces) == 1 else np.concatenate(pieces)
+        late = self.latency_frames
         audio *= self._gains[:frames]
-        self._gains[: self.latency_frames] = self._gains[
-            frames : frames + self.latency_frames
-        ].copy()
+        self._gains[:late] = self._gains[frames : frames + late].copy()
         self._level.limit(audio)
         self.counts.clamped_frames = self._oscillator.clamped_frames
         self.counts.ceiling_frames = self._level.ceiling_frames
@@ -227,8 +257,12 @@ class Patch:
         """Run the stage and the level over frames in which no control moves."""
         if stop == start:
             return
-        self._key[start:stop] = self._key_volts
-        self._glide[start:stop] = self._lag.hold(self._key_volts, stop - start)
+        if self._outside_volts is None:
+            self._key[start:stop] = self._key_volts
+            self._glide[start:stop] = self._lag.hold(self._key_volts, stop - start)
+        else:
+            self._key[start:stop] = self._outside_volts[start:stop]
+            self._glide[start:stop] = self._lag.process(self._key[start:stop])
         # The gains wait as long as the oscillator does.
         self._level.fill(self._gains[self.latency_frames + start : self.latency_frames + stop])
 

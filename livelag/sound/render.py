@@ -75,13 +75,21 @@ def frames_for(duration_s: float, rate_hz: int) -> int:
     return round((duration_s + TAIL_S) * rate_hz)
 
 
-def first_key_volts(patch: Patch, messages: Sequence[TimedMessage]) -> float:
-    """Key volts of the first note, which the stage is taken to rest on before it; 0 without one."""
+def opening(
+    patch: Patch, messages: Sequence[TimedMessage], rate_hz: int
+) -> tuple[float, list[Message]]:
+    """How a piece begins: key volts of its first note, and the controls set before it at time 0.
+
+    The stage is taken to rest on the first note, with its controls as the piece wants them.
+    """
+    controls: list[Message] = []
     for timed in messages:
         message = timed.message
         if message.type == "note_on" and message.velocity > 0:
-            return patch.stage.note_volts(message.note)
-    return 0.0
+            return patch.stage.note_volts(message.note), controls
+        if round(timed.time_s * rate_hz) == 0 and message.type in ("control_change", "pitchwheel"):
+            controls.append(message)
+    return 0.0, controls
 
 
 def render(
@@ -109,7 +117,7 @@ def render(
     """
     check_rate(rate_hz)
     patch.prepare(rate_hz, BLOCK_FRAMES)
-    patch.reset(first_key_volts(patch, messages))
+    patch.begin(*opening(patch, messages, rate_hz))
     late = patch.latency_frames
     keys, glides = np.empty(0), np.empty(0)  # volts that wait for their audio
     done, position, peak = 0, 0, 0.0

@@ -12,6 +12,7 @@ from livelag.circuit.presets import load_stage
 from livelag.circuit.stage import Setting
 from livelag.errors import InputError, UnknownNameError
 from livelag.notes.player import PlayerSettings
+from livelag.sound.lag import Lag
 from livelag.sound.parameters import PARAMETERS, Change
 from livelag.sound.patch import Patch
 
@@ -225,3 +226,34 @@ def test_every_default_is_within_its_own_row():
     for row in PARAMETERS.values():
         assert row.check(row.default) == row.default
         assert row.about
+
+
+def test_outside_volts_glide_in_place_of_the_keys():
+    stage = load_stage("two-range-film")
+    patch = Patch(stage, "ramp", rotation=0.2)
+    patch.prepare(RATE, 512)
+    volts = np.linspace(0.0, 1.0, 512)
+    _, key, glide = patch.process(512, [(0, on(60))], volts)
+    assert np.array_equal(key, volts)
+    lag = Lag(stage, RATE, "ramp", Setting(0, 0.2))
+    assert np.array_equal(glide, lag.process(volts))
+
+
+def test_a_piece_begins_with_its_controls_where_it_wants_them():
+    stage = load_stage("bipolar-drift")  # where the pot stands shows in the resting volts
+    patch = Patch(stage, rotation=0.5)
+    patch.prepare(RATE, 512)
+    patch.begin(1.0, [control(5, 127)])
+    _, _, glide = patch.process(512)
+    assert glide[0] == pytest.approx(stage.settled_volts(1.0, Setting(0, 1.0)), abs=1e-12)
+    assert np.ptp(glide) < 1e-12
+
+
+def test_silence_is_known():
+    patch = Patch(load_stage("ideal"))
+    patch.prepare(RATE, 4800)
+    assert patch.silent
+    patch.process(4800, [(0, on(60)), (4000, off(60))])
+    assert not patch.silent
+    patch.process(4800)
+    assert patch.silent
