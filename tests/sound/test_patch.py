@@ -253,7 +253,7 @@ def test_silence_is_known():
     patch = Patch(load_stage("ideal"))
     patch.prepare(RATE, 4800)
     assert patch.silent
-    patch.process(4800, [(0, on(60)), (4000, off(60))])
+    patch.process(4800, [(0, on(60)), (4700, off(60))])
     assert not patch.silent
     patch.process(4800)
     assert patch.silent
