@@ -134,6 +134,7 @@ class Patch:
         self._bypassed_by_player = False
         self._gate = False
         self._note: int | None = None
+        self._at_rest = True
         self._key_volts = key_volts
         self.counts = PatchCounts()
         if self._prepared:
@@ -290,7 +291,9 @@ class Patch:
             self._lag.move(self._setting())
         if moment.jump_volts is not None:
             self._lag.jump(moment.jump_volts)
-        self._key_volts = moment.key_volts
+        self._at_rest &= moment.note is None
+        if not self._at_rest:  # before the first note a control must not let go of the rest
+            self._key_volts = moment.key_volts
         begins = moment.gate and (not self._gate or moment.retrigger or moment.note != self._note)
         self._note = moment.note
         if begins:
