@@ -1,0 +1,1 @@
+"""Audition: ports, clock, session, panel, take recorder."""

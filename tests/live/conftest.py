@@ -1,0 +1,49 @@
+"""Fixtures for tests on a dummy JACK server. Without one they skip, but under CI they fail."""
+
+import os
+import warnings
+
+import pytest
+from jack_server import PeerProcess, Server, why_not
+
+
+@pytest.fixture
+def jack_server(tmp_path, monkeypatch):
+    """Starts servers: `jack_server(block=128, rate=48000)`; the last one is this process's."""
+    if reason := why_not():
+        if os.environ.get("CI"):
+            pytest.fail(reason)
+        pytest.skip(reason)
+    started = []
+    # Sockets and files of the server lie in TMPDIR's default place, names in the environment.
+    monkeypatch.setenv("JACK_NO_START_SERVER", "1")
+    monkeypatch.setenv("JACK_NO_AUDIO_RESERVATION", "1")
+
+    def start(block=128, rate=48000):
+        server = Server(block, rate, tmp_path)
+        started.append(server)
+        monkeypatch.setenv("JACK_DEFAULT_SERVER", server.name)
+        if not server.realtime:
+            with warnings.catch_warnings():
+                warnings.simplefilter("default")
+                warnings.warn("jackd runs without real-time priority here", stacklevel=2)
+        return server
+
+    yield start
+    for server in started:
+        server.stop()
+
+
+@pytest.fixture
+def jack_peer():
+    """Starts peers: `jack_peer(server, name="keys", events=[...])`; see `jack_peer.py`."""
+    started = []
+
+    def start(server, **plan):
+        peer = PeerProcess(server, plan)
+        started.append(peer)
+        return peer
+
+    yield start
+    for peer in started:
+        peer.quit()
