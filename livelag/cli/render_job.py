@@ -246,21 +246,23 @@ class RenderJob:
         if answer["clipped_notes"]:
             low, high = self.stage.swing_notes()
             found.append(
-                f"{answer['clipped_notes']} notes are beyond what the buffers can pass "
-                f"(notes {low:.1f} to {high:.1f}) and play out of tune"
+                f"notes that the buffers cannot pass (they pass {low:.1f} to {high:.1f}) "
+                f"and that play out of tune: {answer['clipped_notes']}"
             )
         if answer["unglided_notes"] and self.player_settings.glide == "always":
             found.append(
-                f"the music turned the glide off (controller 65) for "
-                f"{answer['unglided_notes']} notes"
+                f"notes for which the music turned the glide off (controller 65): "
+                f"{answer['unglided_notes']}"
             )
         if answer["clamped_frames"]:
             found.append(
-                f"{answer['clamped_frames']} frames asked for a pitch above what "
-                f"{self.rate_hz} Hz can hold"
+                f"frames that asked for a pitch above what {self.rate_hz} Hz can hold: "
+                f"{answer['clamped_frames']}"
             )
         if answer["ceiling_frames"]:
-            found.append(f"the ceiling at -1 dBFS held down {answer['ceiling_frames']} frames")
+            found.append(
+                f"frames that the ceiling at -1 dBFS held down: {answer['ceiling_frames']}"
+            )
         return found
 
 
