@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+from itertools import pairwise
 from typing import TYPE_CHECKING, Any
 
 from livelag.cli.common import (
@@ -67,7 +68,7 @@ def ranges_answer(stage: GlideStage, preset: str) -> dict[str, Any]:
     """Both ends of each range, and the least overlap of neighbours (under 1 is a gap)."""
     from livelag.circuit.stage import Setting
 
-    rows = []
+    rows: list[dict[str, Any]] = []
     for index, name in enumerate(stage.range_names):
         fast, slow = Setting(index, 0.0), Setting(index, 1.0)
         rows.append(
@@ -80,9 +81,6 @@ def ranges_answer(stage: GlideStage, preset: str) -> dict[str, Any]:
                 "octave_arrival_longest_s": stage.octave_arrival_s(slow),
             }
         )
-    ordered = sorted(rows, key=lambda row: float(row["shortest_s"]))
-    overlaps = [
-        float(a["longest_s"]) / float(b["shortest_s"])
-        for a, b in zip(ordered, ordered[1:], strict=False)
-    ]
+    ordered = sorted(rows, key=lambda row: row["shortest_s"])
+    overlaps = [before["longest_s"] / after["shortest_s"] for before, after in pairwise(ordered)]
     return {"preset": preset, "ranges": rows, "overlap_ratio": min(overlaps, default=None)}
