@@ -13,6 +13,7 @@ counted, and silence of the same length stands in for them.
 from __future__ import annotations
 
 import threading
+from contextlib import suppress
 from pathlib import Path
 
 import numpy as np
@@ -202,7 +203,8 @@ class TakeRecorder:
             self._reserve.write_bytes(bytes(RESERVED_BYTES))
             self._file = SoundFileOut(self._part, rate_hz, 1, "float")
         except OSError as error:
-            self._reserve.unlink(missing_ok=True)
+            with suppress(OSError):
+                self._reserve.unlink()
             raise cannot_write(path, error) from error
         self._thread = threading.Thread(target=self._run, name="take recorder", daemon=True)
         self._thread.start()
