@@ -73,7 +73,7 @@ def player_settings_from(args: argparse.Namespace, *, heed_switch: bool = True) 
     from livelag.notes.player import PlayerSettings
 
     return PlayerSettings(
-        priority=args.priority or "last",
+        priority="last" if args.priority is None else args.priority,
         retrigger=args.retrigger,
         glide="legato only" if args.legato_only else "always",
         heed_portamento_switch=heed_switch,

@@ -6,9 +6,11 @@ import json
 import numpy as np
 import pytest
 import soundfile
+from mido import Message
 
 from livelag.circuit.presets import load_stage, preset_names
 from livelag.circuit.stage import Setting
+from livelag.notes.midi_file import TimedMessage, write_midi_file
 from livelag.notes.phrases import PHRASES
 
 CONTRACT = {
@@ -191,6 +193,22 @@ def test_what_the_sound_would_not_tell_is_said(livelag, make_song):
     assert line.endswith("out of tune: 1")
 
 
+def test_music_that_turns_the_glide_off_is_told_and_can_be_overruled(livelag, tmp_path):
+    messages = [TimedMessage(0.0, Message("control_change", control=121, value=0))]
+    for number, note in enumerate((60, 72)):
+        messages.append(TimedMessage(0.2 * number, Message("note_on", note=note)))
+        messages.append(TimedMessage(0.2 * number + 0.2, Message("note_off", note=note)))
+    write_midi_file(tmp_path / "off.mid", messages, 48000)
+    common = ("render", "ideal", "--midi", "off.mid", "--out", "x.wav", "--cv", "x.csv")
+    answer = livelag(*common)
+    assert "turned the glide off (controller 65): 2; --keep-gliding" in answer.err
+    _, rows = curve_of(tmp_path / "x.csv")
+    assert np.array_equal(rows[:, 1], rows[:, 2])
+    assert livelag(*common, "--keep-gliding").err == ""
+    _, rows = curve_of(tmp_path / "x.csv")
+    assert np.abs(rows[:, 1] - rows[:, 2]).max() > 0.9
+
+
 def test_names_and_titles_are_shown_as_they_are_written(livelag, make_song, tmp_path):
     song = make_song(name="[/red] costs $5 \\frac{ é :smile:")
     answer = livelag(
@@ -219,6 +237,7 @@ def test_a_name_as_long_as_the_system_takes_will_do(livelag, tmp_path):
     [
         (("--channels", "1"), "--channels goes with --midi"),
         (("--tracks", "1"), "--tracks goes with --midi"),
+        (("--keep-gliding",), "--keep-gliding goes with --midi"),
         (("--pulse-width", "0.3"), "--pulse-width goes with --waveform pulse"),
         (("--full-scale-volts", "5"), "--full-scale-volts goes with --stereo"),
         (("--cv-rate", "100"), "--cv-rate goes with --cv"),
