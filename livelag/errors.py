@@ -25,17 +25,23 @@ class UnknownNameError(LivelagError, LookupError):
         what: what kind of thing was asked for.
         name: the name asked for.
         known: the names that exist, in the order they are offered.
+        where: the file and field, if there is one.
     """
 
     def __init__(self, what: str, name: object, known: Iterable[str], where: str = "") -> None:
         self.what = what
         self.name = name
         self.known = tuple(known)
+        self.where = where
         near = get_close_matches(str(name), self.known, n=1)
         hint = f"did you mean {near[0]!r}? " if near else ""
         place = f"{where}: " if where else ""
         offer = ", ".join(self.known) or "none"
         super().__init__(f"{place}unknown {what} {str(name)!r}; {hint}known: {offer}")
+
+    def __reduce__(self) -> tuple[type, tuple[str, object, tuple[str, ...], str]]:
+        # Exceptions are unpickled by their arguments, and this one's are not its message.
+        return type(self), (self.what, self.name, self.known, self.where)
 
     def at(self, where: str) -> UnknownNameError:
         """The same error with the place where the name stands."""

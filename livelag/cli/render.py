@@ -131,8 +131,11 @@ def _refuse_contradictions(args: argparse.Namespace) -> None:
                 refuse(args, f"--{option} is for one rendering, not for a set")
         if args.bypass:
             refuse(args, "--bypass makes every rendering of a set the same")
-    if args.bypass and args.legato_only:
-        refuse(args, "--legato-only changes nothing with --bypass")
+    if args.bypass:
+        for option in ("rotation", "range", "legato_only"):
+            value = getattr(args, option)
+            if value is not None and value is not False:
+                refuse(args, f"--{option.replace('_', '-')} changes nothing with --bypass")
 
 
 def show_rendered(job: RenderJob, answer: dict[str, Any]) -> None:

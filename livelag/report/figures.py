@@ -55,7 +55,9 @@ def save_figure(figure: Figure, path: Path) -> None:
 
     suffix = path.suffix.lower()
     metadata = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}}.get(suffix)
-    with rc_context({"svg.hashsalt": "livelag"}), warnings.catch_warnings():
+    # Long lines are drawn in pieces, or the rasteriser's memory would grow with their length.
+    settings = {"svg.hashsalt": "livelag", "agg.path.chunksize": 2000}
+    with rc_context(settings), warnings.catch_warnings():
         # A title may hold signs that no font at hand has; they show as boxes.
         warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
         try:

@@ -247,6 +247,8 @@ def test_a_name_as_long_as_the_system_takes_will_do(livelag, tmp_path):
         (("--rotations", "0,1", "--picture", "x.png"), "--picture is for one rendering"),
         (("--ranges", "all", "--bypass"), "--bypass makes every rendering"),
         (("--bypass", "--legato-only"), "--legato-only changes nothing"),
+        (("--bypass", "--rotation", "0"), "--rotation changes nothing"),
+        (("--bypass", "--range", "slow"), "--range changes nothing"),
         (("--phrase", "run", "--midi", "x.mid"), "not allowed with argument"),
         (("--rotation", "half"), "invalid float value"),
         (("--rate", "44.1k"), "invalid int value"),
