@@ -18,7 +18,7 @@ from types import FrameType
 import livelag
 from livelag.errors import LivelagError
 
-COMMANDS = ("render", "ranges", "presets")
+COMMANDS = ("audition", "render", "ranges", "presets", "devices")
 
 DONE, AT_FAULT, WRONG_COMMAND_LINE, INTERRUPTED = 0, 1, 2, 130
 

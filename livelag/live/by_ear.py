@@ -6,8 +6,8 @@ from dataclasses import replace
 
 from livelag.circuit.parts import Buffer, Capacitor, Pot, Resistor, Taper
 from livelag.circuit.stage import GlideStage, Range
+from livelag.live.snapshot import BY_EAR_LONGEST_S, BY_EAR_SHORTEST_S
 
-SHORTEST_S, LONGEST_S = 0.5e-3, 10.0
 _CAPACITANCE_F = 1e-6
 _POINTS = 1025  # straight lines between them leave the logarithm by less than 0.003 %
 
@@ -18,7 +18,7 @@ def free_stage(stage: GlideStage) -> GlideStage:
     Its buffers have the stage's headroom and no errors, since the errors belong to parts that
     have not been chosen yet.
     """
-    lowest, highest = SHORTEST_S / _CAPACITANCE_F, LONGEST_S / _CAPACITANCE_F
+    lowest, highest = BY_EAR_SHORTEST_S / _CAPACITANCE_F, BY_EAR_LONGEST_S / _CAPACITANCE_F
     series = lowest / 2
     end, track = lowest - series, highest - series
     rotations = tuple(i / (_POINTS - 1) for i in range(_POINTS))

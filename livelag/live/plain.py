@@ -7,6 +7,7 @@ import time
 from collections.abc import Callable, Iterator
 from typing import TextIO
 
+from livelag.live.controls import help_rows
 from livelag.live.panel_text import fixed, seconds, tidy
 from livelag.live.snapshot import Snapshot
 from livelag.units import note_name
@@ -35,6 +36,11 @@ class PlainPrinter:
         """Say what has changed; what changes faster than it can be read waits for a later call."""
         self._latest = snapshot
         self._say(self._clock())
+
+    def say_help(self, by_ear: bool) -> None:
+        """Say every control, a line each."""
+        for row in help_rows(by_ear):
+            self._print(f"{row.shown}: {row.sentence}")
 
     def close(self) -> None:
         """Say what still waits."""

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import warnings
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -56,7 +56,7 @@ def save_figure(figure: Figure, path: Path) -> None:
     suffix = path.suffix.lower()
     metadata = {".svg": {"Date": None}, ".pdf": {"CreationDate": None}}.get(suffix)
     # Long lines are drawn in pieces, or the rasteriser's memory would grow with their length.
-    settings = {"svg.hashsalt": "livelag", "agg.path.chunksize": 2000}
+    settings: Any = {"svg.hashsalt": "livelag", "agg.path.chunksize": 2000}
     with rc_context(settings), warnings.catch_warnings():
         # A title may hold signs that no font at hand has; they show as boxes.
         warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
