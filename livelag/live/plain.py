@@ -84,7 +84,7 @@ def _topics(snapshot: Snapshot) -> Iterator[tuple[str, str]]:
         ("slowest useful", snapshot.longest_s),
     ):
         yield word, f"mark {word} {seconds(time_s)}" if time_s is not None else ""
-    yield "drops", f"take lost {snapshot.take_drops} blocks" if snapshot.take_drops else ""
+    yield "drops", f"take lost {snapshot.take_drops} frames" if snapshot.take_drops else ""
     yield "dropouts", f"dropouts {snapshot.dropouts}" if snapshot.dropouts else ""
     yield "message", tidy(snapshot.message)
 

@@ -49,7 +49,7 @@ class Snapshot:
         recording: whether a take is ``off``, ``armed`` or ``on``.
         take_name: name of the take.
         take_s: its length so far, seconds.
-        take_drops: blocks that it lost.
+        take_drops: frames that it lost.
         rate_hz: frames per second.
         block_frames: frames in a block.
         latency_s: from a key to the sound, seconds.

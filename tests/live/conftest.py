@@ -5,15 +5,37 @@ import warnings
 
 import pytest
 from jack_server import PeerProcess, Server, why_not
+from tmux_terminal import Terminal, why_no_tmux
+
+
+def require(reason):
+    """Skip for a reason, if there is one; under CI fail."""
+    if reason and os.environ.get("CI"):
+        pytest.fail(reason)
+    if reason:
+        pytest.skip(reason)
+
+
+@pytest.fixture
+def terminal(tmp_path):
+    """Starts terminals: `terminal(width=80, height=24)`, more of the environment by name."""
+    require(why_no_tmux())
+    started = []
+
+    def start(width=80, height=24, **extra):
+        started.append(Terminal(tmp_path, width, height, **extra))
+        started[-1].prepare(width, height)
+        return started[-1]
+
+    yield start
+    for one in started:
+        one.stop()
 
 
 @pytest.fixture
 def jack_server(tmp_path, monkeypatch):
     """Starts servers: `jack_server(block=128, rate=48000)`; the last one is this process's."""
-    if reason := why_not():
-        if os.environ.get("CI"):
-            pytest.fail(reason)
-        pytest.skip(reason)
+    require(why_not())
     started = []
     # Sockets and files of the server lie in TMPDIR's default place, names in the environment.
     monkeypatch.setenv("JACK_NO_START_SERVER", "1")

@@ -7,8 +7,9 @@ from test_engine import Bench
 
 from livelag.circuit.presets import load_stage
 from livelag.circuit.stage import Setting
-from livelag.live.by_ear import LONGEST_S, SHORTEST_S, free_stage
+from livelag.live.by_ear import free_stage
 from livelag.live.desk import Desk
+from livelag.live.snapshot import BY_EAR_LONGEST_S, BY_EAR_SHORTEST_S
 from livelag.sound.patch import Patch
 
 
@@ -164,7 +165,7 @@ def test_every_action_of_the_desk_is_safe_at_any_time(bench, desk):
 def test_the_freed_pot_is_logarithmic_from_half_a_millisecond_to_ten_seconds(preset):
     stage = free_stage(load_stage(preset))
     for turn in (0.0, 0.1, 0.333, 0.5, 0.77, 1.0):
-        expected = SHORTEST_S * (LONGEST_S / SHORTEST_S) ** turn
+        expected = BY_EAR_SHORTEST_S * (BY_EAR_LONGEST_S / BY_EAR_SHORTEST_S) ** turn
         assert stage.time_constant_s(Setting(0, turn)) == pytest.approx(expected, rel=1e-4)
     assert stage.swing_notes()[1] == pytest.approx(load_stage(preset).swing_notes()[1], abs=0.2)
 

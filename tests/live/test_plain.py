@@ -56,7 +56,7 @@ def test_begins_with_where_everything_stands(printed, played):
         ({"recording": "on", "take_name": "take-1.wav"}, "take running take-1.wav"),
         ({"recording": "armed"}, "take armed"),
         ({"dropouts": 3}, "dropouts 3"),
-        ({"take_drops": 2}, "take lost 2 blocks"),
+        ({"take_drops": 2}, "take lost 2 frames"),
         ({"message": "B stored"}, "B stored"),
         ({"shortest_s": 0.0021}, "mark fastest useful 2.10 ms"),
         ({"handover_s": 0.08}, "mark hand-over 80.0 ms"),
