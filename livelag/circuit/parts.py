@@ -329,8 +329,8 @@ class Buffer:
         for what, value in (
             ("headroom to the positive rail", self.headroom_positive_v),
             ("headroom to the negative rail", self.headroom_negative_v),
-            ("largest offset", self.offset_limit_v),
-            ("largest bias", self.bias_limit_a),
+            ("offset limit", self.offset_limit_v),
+            ("bias limit", self.bias_limit_a),
         ):
             require(
                 math.isfinite(value) and value >= 0,

@@ -16,11 +16,13 @@ from livelag.cli.common import (
     show_json,
     warn,
 )
+from livelag.cli.performance import add_key_options, add_setting_options, add_sound_options
 
 if TYPE_CHECKING:
     from livelag.cli.render_job import RenderJob
 
 DEFAULT_PHRASE = "procession"
+LEVEL_DBFS = -18.0
 
 
 def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -42,32 +44,16 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
         "--channels", metavar="1,2", help="play these channels only, 1 to 16; default all, merged"
     )
     notes.add_argument("--tracks", metavar="1,2", help="play these tracks only, from 1")
-    notes.add_argument("--priority", metavar="RULE", help="which held key sounds: last, low, high")
     notes.add_argument(
-        "--retrigger",
-        action="store_true",
-        help="restart the level at every note, legato too",
-    )
-    notes.add_argument(
-        "--legato-only", action="store_true", help="glide only between overlapping notes"
-    )
+        "--keep-gliding", action="store_true",
+        help="glide on when the music turns the glide off (controllers 65 and 121)",
+    )  # fmt: skip
+    add_key_options(notes)
     stage = parser.add_argument_group("stage")
-    stage.add_argument("--rotation", type=float, metavar="X", help="pot, 0 to 1; default 0.5")
-    stage.add_argument("--range", metavar="NAME", help="range switch; default the first range")
-    stage.add_argument("--method", metavar="M", default="exact", help="exact (default) or bilinear")
+    add_setting_options(stage)
     stage.add_argument("--bypass", action="store_true", help="without the glide, to compare with")
     sound = parser.add_argument_group("sound")
-    sound.add_argument("--waveform", metavar="W", help="saw (default), pulse, triangle, sine")
-    sound.add_argument(
-        "--pulse-width", type=float, metavar="X", help="0.02 to 0.98, for --waveform pulse"
-    )
-    sound.add_argument("--level", type=float, metavar="DBFS", help="peak level; default -18")
-    sound.add_argument(
-        "--velocity",
-        type=float,
-        metavar="X",
-        help="how far velocity sets the level, 0 to 1; default 0",
-    )
+    add_sound_options(sound, LEVEL_DBFS)
     sound.add_argument("--rate", type=int, default=48000, metavar="HZ", help="default 48000")
     sound.add_argument("--depth", default="24", metavar="BITS", help="16, 24 (default) or float")
     sound.add_argument(
@@ -126,9 +112,9 @@ def _render(args: argparse.Namespace, job: RenderJob) -> None:
 def _refuse_contradictions(args: argparse.Namespace) -> None:
     """Refuse options that would change nothing."""
     if args.midi is None:
-        for option in ("channels", "tracks"):
-            if getattr(args, option) is not None:
-                refuse(args, f"--{option} goes with --midi")
+        for option in ("channels", "tracks", "keep_gliding"):
+            if getattr(args, option):
+                refuse(args, f"--{option.replace('_', '-')} goes with --midi")
     if args.pulse_width is not None and args.waveform != "pulse":
         refuse(args, "--pulse-width goes with --waveform pulse")
     if args.full_scale_volts is not None and not args.stereo:

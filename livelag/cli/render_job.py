@@ -13,6 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from livelag.circuit.stage import GlideStage, Setting
+from livelag.cli.performance import check_method, parameters_from, player_settings_from
+from livelag.cli.render import LEVEL_DBFS
 from livelag.errors import InputError, UnknownNameError
 from livelag.files import WholeFiles
 from livelag.notes.midi_file import Song, read_midi_file
@@ -24,7 +26,6 @@ from livelag.sound.render import Sink, check_rate, frames_for, render
 from livelag.sound.soundfile_out import DEPTHS, SoundFileOut, check_format
 from livelag.units import amplitude_to_dbfs
 
-METHODS = ("exact", "bilinear")
 DEFAULT_FULL_SCALE_V = 10.0
 
 Samples = NDArray[np.float64]
@@ -61,8 +62,7 @@ class RenderJob:
     full_scale_v: float | None = None
 
     def __post_init__(self) -> None:
-        if self.method not in METHODS:
-            raise UnknownNameError("method", self.method, METHODS)
+        check_method(self.method)
         if self.depth not in DEPTHS:
             raise UnknownNameError("depth", self.depth, DEPTHS)
         check_rate(self.rate_hz)
@@ -92,24 +92,10 @@ class RenderJob:
             chosen = phrase(DEFAULT_PHRASE if args.phrase is None else args.phrase)
             name = chosen.name
             song = Song(name, chosen.messages, chosen.duration_s, chosen.note_count)
-        parameters: dict[str, Value] = {
-            key: value
-            for key, value in (
-                ("rotation", args.rotation),
-                ("range", None if args.range is None else float(stage.range_index(args.range))),
-                ("bypass", 1.0 if args.bypass else None),
-                ("waveform", args.waveform),
-                ("pulse_width", args.pulse_width),
-                ("level", args.level),
-                ("velocity", args.velocity),
-            )
-            if value is not None
-        }
-        settings = PlayerSettings(
-            priority="last" if args.priority is None else args.priority,
-            retrigger=args.retrigger,
-            glide="legato only" if args.legato_only else "always",
-        )
+        parameters = parameters_from(args, stage, LEVEL_DBFS)
+        if args.bypass:
+            parameters["bypass"] = 1.0
+        settings = player_settings_from(args, heed_switch=not args.keep_gliding)
         full_scale = args.full_scale_volts
         if args.stereo and full_scale is None:
             full_scale = DEFAULT_FULL_SCALE_V
@@ -246,21 +232,23 @@ class RenderJob:
         if answer["clipped_notes"]:
             low, high = self.stage.swing_notes()
             found.append(
-                f"{answer['clipped_notes']} notes are beyond what the buffers can pass "
-                f"(notes {low:.1f} to {high:.1f}) and play out of tune"
+                f"notes that the buffers cannot pass (they pass {low:.1f} to {high:.1f}) "
+                f"and that play out of tune: {answer['clipped_notes']}"
             )
         if answer["unglided_notes"] and self.player_settings.glide == "always":
             found.append(
-                f"the music turned the glide off (controller 65) for "
-                f"{answer['unglided_notes']} notes"
+                f"notes for which the music turned the glide off (controller 65): "
+                f"{answer['unglided_notes']}; --keep-gliding overrules it"
             )
         if answer["clamped_frames"]:
             found.append(
-                f"{answer['clamped_frames']} frames asked for a pitch above what "
-                f"{self.rate_hz} Hz can hold"
+                f"frames that asked for a pitch above what {self.rate_hz} Hz can hold: "
+                f"{answer['clamped_frames']}"
             )
         if answer["ceiling_frames"]:
-            found.append(f"the ceiling at -1 dBFS held down {answer['ceiling_frames']} frames")
+            found.append(
+                f"frames that the ceiling at -1 dBFS held down: {answer['ceiling_frames']}"
+            )
         return found
 
 

@@ -41,9 +41,21 @@ def render_set(args: argparse.Namespace, job: RenderJob) -> None:
             seconds(row["time_constant_s"]), f"{row['seconds']:.2f}", f"{row['peak_dbfs']:.1f}",
         )  # fmt: skip
     console().print(table)
-    console().print(f"{len(answers)} files and {INDEX_NAME} in {folder}")
-    for sentence in dict.fromkeys(s for row in answers for s in job.remarks(row)):
+    console().print(f"Written to {folder}: {INDEX_NAME}, sound files: {len(answers)}")
+    for sentence in _remarks(job, answers):
         warn(sentence)
+
+
+def _remarks(job: RenderJob, answers: list[dict[str, Any]]) -> list[str]:
+    """What went on in every rendering, said once; what in some only, with their files."""
+    files: dict[str, list[str]] = {}
+    for row in answers:
+        for sentence in job.remarks(row):
+            files.setdefault(sentence, []).append(Path(row["out"]).name)
+    return [
+        sentence if len(names) == len(answers) else f"{', '.join(names)}: {sentence}"
+        for sentence, names in files.items()
+    ]
 
 
 def _rotations(args: argparse.Namespace, job: RenderJob) -> list[float]:
@@ -107,7 +119,7 @@ def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any
     # Spawned, not forked: threads of the parent must not be copied half-way.
     pool = ProcessPoolExecutor(mp_context=multiprocessing.get_context("spawn"))
     try:
-        with _interrupts_left_to_parent():
+        with _stop_afterwards():
             futures = [
                 pool.submit(RenderJob.run, job, path) for job, path in zip(jobs, paths, strict=True)
             ]
@@ -125,13 +137,27 @@ def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any
 
 
 @contextmanager
-def _interrupts_left_to_parent() -> Iterator[None]:
-    """Start processes that ignore Ctrl-C from their very first moment, as they inherit that."""
-    ours = signal.signal(signal.SIGINT, signal.SIG_IGN)
+def _stop_afterwards() -> Iterator[None]:
+    """Put off Ctrl-C and SIGTERM, so that no process is lost while it is being started.
+
+    The processes inherit the blocked Ctrl-C and leave it to their parent.
+    """
+    asked: list[int] = []
+    ours = {
+        number: signal.signal(number, lambda number, frame: asked.append(number))
+        for number in (signal.SIGINT, signal.SIGTERM)
+    }
+    if hasattr(signal, "pthread_sigmask"):
+        signal.pthread_sigmask(signal.SIG_BLOCK, [signal.SIGINT])
     try:
         yield
     finally:
-        signal.signal(signal.SIGINT, ours)
+        if hasattr(signal, "pthread_sigmask"):
+            signal.pthread_sigmask(signal.SIG_UNBLOCK, [signal.SIGINT])
+        for number, handler in ours.items():
+            signal.signal(number, handler)
+    if asked:
+        raise KeyboardInterrupt
 
 
 def _write_index(path: Path, answers: list[dict[str, Any]]) -> None:

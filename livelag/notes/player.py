@@ -89,6 +89,7 @@ class Player:
         """No key, no pedal, 0 V, bend centred over its default range, portamento on."""
         self._down: dict[int, int] = {}  # key -> velocity, in the order pressed
         self._note: int | None = None
+        self._last_note: int | None = None
         self._velocity = 64
         self._note_volts = 0.0
         self._hold = False
@@ -117,6 +118,21 @@ class Player:
     def portamento(self) -> bool:
         """Whether portamento (65) is on."""
         return self._portamento
+
+    @property
+    def last_note(self) -> int | None:
+        """The key sounding, or the last that did; None before the first."""
+        return self._last_note
+
+    @property
+    def hold(self) -> bool:
+        """Whether the hold pedal is down."""
+        return self._hold
+
+    @property
+    def bend_steps(self) -> int:
+        """Where the bend stands, -8192 to 8191."""
+        return self._bend_steps
 
     @property
     def bend_range_semitones(self) -> float:
@@ -180,7 +196,7 @@ class Player:
         return self._settle()
 
     def _begin(self, note: int, *, legato: bool, forced: bool) -> None:
-        self._note = note
+        self._note = self._last_note = note
         self._velocity = self._down[note]
         self._note_volts = self._volts(note)
         self._legato = legato

@@ -73,11 +73,19 @@ class SoundFileOut:
         error: BaseException | None,
         trace: TracebackType | None,
     ) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Finish the file; what has been written until now is whole.
+
+        Raises:
+            OSError: if the disk is full or gone.
+        """
         try:
             self._file.close()
         except self._errors as failure:
             raise self._failure() from failure
-        if kind is None and self._depth == "float":
+        if self._depth == "float":
             _clear_time_stamp(self._path)
 
     def write(self, samples: NDArray[np.float64]) -> None:

@@ -1,0 +1,50 @@
+"""What the tests of commands share: a command line run in this process, and songs to give it."""
+
+from dataclasses import dataclass
+
+import pytest
+from mido import Message, MetaMessage, MidiFile, MidiTrack
+
+from livelag.cli.main import run
+
+
+@dataclass
+class Answer:
+    """How a command line ended."""
+
+    status: int
+    out: str
+    err: str
+
+
+@pytest.fixture
+def livelag(capsys, monkeypatch, tmp_path):
+    """Run a command line in an empty folder."""
+    monkeypatch.chdir(tmp_path)
+
+    def call(*arguments):
+        capsys.readouterr()
+        try:
+            status = run([str(a) for a in arguments])
+        except SystemExit as end:
+            status = end.code
+        shown = capsys.readouterr()
+        return Answer(status, shown.out, shown.err)
+
+    return call
+
+
+@pytest.fixture
+def make_song(tmp_path):
+    """Write a MIDI file of notes a quarter of a second long, and return its path."""
+
+    def make(notes=(60, 67, 72), ticks=240, name="", file="song.mid", channel=0):
+        track = MidiTrack([MetaMessage("track_name", name=name)] if name else [])
+        for note in notes:
+            track.append(Message("note_on", note=note, velocity=100, channel=channel))
+            track.append(Message("note_off", note=note, time=ticks, channel=channel))
+        path = tmp_path / file
+        MidiFile(type=0, ticks_per_beat=480, tracks=[track]).save(path)
+        return path
+
+    return make

@@ -1,0 +1,99 @@
+"""Files that appear whole or not at all."""
+
+import errno
+import stat
+from pathlib import Path
+
+import pytest
+
+from livelag.errors import FileError
+from livelag.files import WholeFiles, cannot_write
+
+
+def test_files_appear_together_at_the_end(tmp_path):
+    with WholeFiles() as files:
+        for name in ("a.wav", "b.csv"):
+            temporary = files.temporary(tmp_path / name)
+            assert temporary.parent == tmp_path
+            assert temporary.suffix == Path(name).suffix
+            assert temporary.name.startswith(".")
+            temporary.write_text(name)
+        assert not (tmp_path / "a.wav").exists()
+    assert {path.name: path.read_text() for path in tmp_path.iterdir()} == {
+        "a.wav": "a.wav",
+        "b.csv": "b.csv",
+    }
+
+
+def test_a_file_has_the_rights_of_any_new_file(tmp_path):
+    (tmp_path / "plain").touch()
+    with WholeFiles() as files:
+        files.temporary(tmp_path / "x.wav").write_text("x")
+    modes = {stat.S_IMODE(path.stat().st_mode) for path in tmp_path.iterdir()}
+    assert len(modes) == 1
+
+
+@pytest.mark.parametrize("kind", [ValueError, KeyboardInterrupt, SystemExit, FileError])
+def test_nothing_is_left_after_any_exception_and_older_files_stay(tmp_path, kind):
+    (tmp_path / "a.wav").write_text("older")
+    with pytest.raises(kind, match="stop"), WholeFiles() as files:  # noqa: PT012
+        files.temporary(tmp_path / "a.wav").write_text("new")
+        files.temporary(tmp_path / "b.csv").write_text("new")
+        raise kind("stop")
+    assert [path.name for path in tmp_path.iterdir()] == ["a.wav"]
+    assert (tmp_path / "a.wav").read_text() == "older"
+
+
+def test_a_failure_names_the_file_that_it_was_about(tmp_path):
+    with pytest.raises(FileError) as caught, WholeFiles() as files:  # noqa: PT012
+        files.temporary(tmp_path / "a.wav")
+        second = files.temporary(tmp_path / "b.csv")
+        raise OSError(errno.ENOSPC, "No space left on device", str(second))
+    assert str(caught.value) == f"{tmp_path / 'b.csv'}: cannot be written: No space left on device"
+    assert not any(tmp_path.iterdir())
+
+
+def test_a_failure_without_a_name_is_about_the_first_file(tmp_path):
+    with pytest.raises(FileError, match=r"a\.wav: cannot be written: gone"), WholeFiles() as files:  # noqa: PT012
+        files.temporary(tmp_path / "a.wav")
+        files.temporary(tmp_path / "b.csv")
+        raise OSError("gone")
+
+
+def test_a_temporary_that_vanished_is_one_line(tmp_path):
+    with pytest.raises(FileError, match=r"b\.csv: cannot be written"), WholeFiles() as files:
+        files.temporary(tmp_path / "b.csv").unlink()
+    assert not any(tmp_path.iterdir())
+
+
+@pytest.mark.parametrize(
+    ("name", "message"),
+    [
+        ("none/x.wav", "does not exist; make it first"),
+        ("file/x.wav", "does not exist; make it first"),
+        ("folder", "is a folder; name a file"),
+        ("n" * 300, "cannot be written: File name too long"),
+    ],
+)
+def test_places_that_cannot_hold_a_file(tmp_path, name, message):
+    (tmp_path / "file").touch()
+    (tmp_path / "folder").mkdir()
+    with pytest.raises(FileError) as caught, WholeFiles() as files:
+        files.temporary(tmp_path / name)
+    assert str(caught.value).startswith(f"{tmp_path / name}: ")
+    assert message in str(caught.value)
+    assert {path.name for path in tmp_path.iterdir()} == {"file", "folder"}
+
+
+def test_the_second_place_may_be_the_wrong_one(tmp_path):
+    with pytest.raises(FileError, match="does not exist"), WholeFiles() as files:  # noqa: PT012
+        files.temporary(tmp_path / "a.wav")
+        files.temporary(tmp_path / "none" / "b.csv")
+    assert not any(tmp_path.iterdir())
+
+
+def test_cannot_write_says_why():
+    assert str(cannot_write(Path("x"), OSError(errno.EACCES, "Permission denied"))) == (
+        "x: cannot be written: Permission denied"
+    )
+    assert str(cannot_write(Path("x"), OSError("odd"))) == "x: cannot be written: odd"
