@@ -17,7 +17,7 @@ from livelag.cli.common import (
     warn,
 )
 from livelag.cli.extras import Rows, add_extras, check_extras, show_written, write_extras
-from livelag.cli.song_options import add_song_options, player_settings, read_song
+from livelag.cli.song_options import add_song_options, read_song, song_player_settings
 
 if TYPE_CHECKING:
     from rich.table import Table
@@ -67,7 +67,7 @@ def run(args: argparse.Namespace) -> None:
     index = stage.range_index(args.range) if args.range is not None else 0
     setting = Setting(index, 0.5 if args.rotation is None else args.rotation)
     tolerance = ARRIVAL_TOLERANCE_CENTS if args.cents is None else args.cents
-    settings = player_settings(args)
+    settings = song_player_settings(args)
 
     def timeline_from(start_range: int) -> Timeline:
         return lay_out(stage, song.messages, song.duration_s, start_range, settings)

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from livelag.cli.common import refuse, warn
+from livelag.cli.performance import add_key_options, player_settings_from
 from livelag.errors import InputError
 
 if TYPE_CHECKING:
@@ -44,10 +45,11 @@ def add_song_options(parser: argparse.ArgumentParser) -> None:
         "--channels", metavar="1,2", help="play these channels only, 1 to 16; default all, merged"
     )
     notes.add_argument("--tracks", metavar="1,2", help="play these tracks only, from 1")
-    notes.add_argument("--priority", metavar="RULE", help="which held key sounds: last, low, high")
     notes.add_argument(
-        "--legato-only", action="store_true", help="glide only between overlapping notes"
-    )
+        "--keep-gliding", action="store_true",
+        help="glide on when the music turns the glide off (controllers 65 and 121)",
+    )  # fmt: skip
+    add_key_options(notes)
 
 
 def read_song(args: argparse.Namespace) -> SongChoice:
@@ -60,9 +62,9 @@ def read_song(args: argparse.Namespace) -> SongChoice:
         InputError: if a channel or track is not a number that exists.
     """
     if args.midi is None:
-        for option in ("channels", "tracks"):
-            if getattr(args, option) is not None:
-                refuse(args, f"--{option} goes with --midi")
+        for option in ("channels", "tracks", "keep_gliding"):
+            if getattr(args, option) not in (None, False):
+                refuse(args, f"--{option.replace('_', '-')} goes with --midi")
         from livelag.notes.phrases import phrase
 
         chosen = phrase(args.phrase or DEFAULT_PHRASE)
@@ -79,17 +81,13 @@ def read_song(args: argparse.Namespace) -> SongChoice:
     return SongChoice(song.title, song.messages, song.duration_s)
 
 
-def player_settings(args: argparse.Namespace) -> PlayerSettings:
-    """How keys become volts.
+def song_player_settings(args: argparse.Namespace) -> PlayerSettings:
+    """How keys become volts, as the options say.
 
     Raises:
         UnknownNameError: if there is no such priority.
     """
-    from livelag.notes.player import PlayerSettings
-
-    return PlayerSettings(
-        priority=args.priority or "last", glide="legato only" if args.legato_only else "always"
-    )
+    return player_settings_from(args, heed_switch=not args.keep_gliding)
 
 
 def _number_set(text: str | None, option: str) -> set[int] | None:

@@ -144,6 +144,15 @@ def test_priority_and_legato_only_are_followed(cli, song):
     assert "2 notes go without glide" in err
 
 
+def test_keep_gliding_overrules_the_music(cli, song):
+    off = (0.5, Message("control_change", control=65, value=0))
+    turned_off = song((0, 1, 48), (1, 1.01, 60), extra=[off])
+    heeded = json.loads(cli("lone.toml", "--midi", turned_off, "--json")[1])
+    kept = json.loads(cli("lone.toml", "--midi", turned_off, "--keep-gliding", "--json")[1])
+    assert [note["arrives"] for note in heeded["notes"]] == [True, True]
+    assert [note["arrives"] for note in kept["notes"]] == [True, False]
+
+
 def test_notes_about_the_song_go_to_standard_error(cli, song):
     moves = [
         (0.5, Message("control_change", control=5, value=10)),
@@ -189,7 +198,13 @@ def test_a_share_of_a_song_that_turns_the_pot_is_refused(cli, song):
 
 @pytest.mark.parametrize(
     "arguments",
-    [["--channels", "1"], ["--tracks", "1"], ["--phrase", "run", "--midi", "x.mid"], ["--share"]],
+    [
+        ["--channels", "1"],
+        ["--tracks", "1"],
+        ["--keep-gliding"],
+        ["--phrase", "run", "--midi", "x.mid"],
+        ["--share"],
+    ],
 )
 def test_options_that_do_not_apply_are_refused(cli, arguments):
     assert cli(*arguments)[0] == 2
