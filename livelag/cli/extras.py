@@ -1,0 +1,93 @@
+"""What the builder's commands can write beside their table: rows as CSV and a picture."""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Callable, Iterable, Sequence
+from itertools import combinations
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from livelag.errors import InputError
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+    from rich.console import Console
+
+    from livelag.circuit.stage import GlideStage
+
+Rows = tuple[Sequence[str], Iterable[Sequence[object]]]
+
+
+def add_extras(parser: argparse.ArgumentParser, rows: str, picture: str) -> None:
+    """Add `--csv` and `--picture`, saying what each shows."""
+    files = parser.add_argument_group("files")
+    files.add_argument("--csv", metavar="FILE", help=rows)
+    files.add_argument("--picture", metavar="FILE", help=f".png, .svg or .pdf: {picture}")
+
+
+def check_extras(args: argparse.Namespace) -> None:
+    """Refuse names that cannot be written before any work is done.
+
+    Raises:
+        UnknownNameError: if the picture's suffix is none of those known.
+        InputError: if both name the same file.
+    """
+    if args.picture is not None:
+        from livelag.report.figures import check_picture
+
+        check_picture(Path(args.picture))
+    named = [(option, vars(args).get(option)) for option in ("csv", "picture", "save")]
+    given = [(option, Path(name).absolute()) for option, name in named if name is not None]
+    for (one, path), (other, same) in combinations(given, 2):
+        if path == same:
+            raise InputError(f"{path}: --{one} and --{other} name the same file")
+
+
+def write_extras(
+    args: argparse.Namespace,
+    rows: Callable[[], Rows],
+    draw: Callable[[], Figure],
+    preset: GlideStage | None = None,
+) -> dict[str, str]:
+    """Write what was asked for, every file or none; returns what to add to the answer.
+
+    Args:
+        args: the command line.
+        rows: header and rows of `--csv`.
+        draw: makes the figure of `--picture`.
+        preset: a stage to write to `--save`; None writes none.
+
+    Raises:
+        FileError: if a file cannot be written.
+    """
+    if args.csv is None and args.picture is None and preset is None:
+        return {}
+    from livelag.files import WholeFiles
+
+    written = {}
+    with WholeFiles() as files:
+        if args.csv is not None:
+            from livelag.report.rows import write_csv
+
+            write_csv(files.temporary(Path(args.csv)), *rows())
+            written["csv"] = args.csv
+        if args.picture is not None:
+            from livelag.report.figures import save_figure
+
+            place = files.temporary(Path(args.picture))
+            save_figure(draw(), place)
+            written["picture"] = args.picture
+        if preset is not None:
+            from livelag.circuit.presets import stage_to_toml
+
+            place = files.temporary(Path(args.save))
+            place.write_text(stage_to_toml(preset), encoding="utf-8")
+            written["saved"] = args.save
+    return written
+
+
+def show_written(out: Console, written: dict[str, str]) -> None:
+    """Say which files there are now."""
+    for what, path in written.items():
+        out.print(f"{what} in {path}")
