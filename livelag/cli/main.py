@@ -18,7 +18,16 @@ from types import FrameType
 import livelag
 from livelag.errors import LivelagError
 
-COMMANDS = ("audition", "render", "ranges", "presets", "devices")
+COMMANDS = (
+    "audition",
+    "render",
+    "ranges",
+    "arrival",
+    "tuning",
+    "spread",
+    "presets",
+    "devices",
+)
 
 DONE, AT_FAULT, WRONG_COMMAND_LINE, INTERRUPTED = 0, 1, 2, 130
 
