@@ -179,20 +179,24 @@ def test_deviation_is_what_is_left_to_go(case, data):
     np.testing.assert_allclose(network.gain * source + left, bus, rtol=0, atol=1e-8)
 
 
-def test_parts_many_decades_apart_stay_finite():
+@pytest.mark.parametrize("kind", ["ideal", "polyester", "tantalum"])
+@pytest.mark.parametrize("farads", [1e-9, 1.0, 1e3])
+def test_parts_many_decades_apart_stay_finite(kind, farads):
     stage = GlideStage(
         title="extremes",
-        capacitors=(Capacitor("a", 1e-15), Capacitor("b", 1e3, "tantalum")),
+        capacitors=(Capacitor("a", 1e-15), Capacitor("b", farads, kind)),
         ranges=(Range("a", ("a",)),),
         pot=Pot(1e-3),
         series=Resistor(1e-3),
         bleed=Resistor(1e12),
     )
-    network = stage.network(Setting(0, 0.0))
-    assert np.all(network.poles < 0.0)
+    fastest = Setting(0, 0.0)
+    network = stage.network(fastest)
+    assert np.all(network.poles < 0.0)  # driven through the bleed, so none stands still
     assert network.gain == pytest.approx(1.0, rel=1e-6)
-    assert np.all(np.isfinite(network.state_after(np.array([1.0, 1.0, 1.0, 1.0]), 2.0, 1.0)))
-    assert stage.arrival_s(np.zeros(4), 1.0, Setting(0, 0.0)) >= 0.0
+    start = np.linspace(-1.0, 1.0, stage.wiring.state_count)
+    assert np.all(np.isfinite(network.state_after(start, 2.0, 1.0)))
+    assert 0.0 <= stage.arrival_s(start, 1.0, fastest) < np.inf
 
 
 def test_behind_a_bypass_absorption_and_bled_capacitors_still_take_their_time():
@@ -206,3 +210,18 @@ def test_behind_a_bypass_absorption_and_bled_capacitors_still_take_their_time():
     bleed_s = stage.bleed.resistance_ohms * large.capacitance_f
     # Its own absorption, a fraction of a per cent, slows the parked capacitor that little.
     assert after[1] == pytest.approx(2.0 * (1 - np.exp(-3.0 / bleed_s)), rel=3e-3)
+
+
+def test_a_bus_slower_than_its_neighbours_by_all_of_rounding_still_moves():
+    stage = GlideStage(
+        title="a short for a bleed",
+        capacitors=(Capacitor("a", 0.1), Capacitor("b", 1e-13), Capacitor("c", 1e-2)),
+        ranges=(Range("a", ("a",)),),
+        pot=Pot(1e11),
+        series=Resistor(3e11),
+        bleed=Resistor(2e-3),
+    )
+    network = stage.network(Setting(0, 0.0))
+    assert np.all(network.poles < 0.0)
+    assert np.isfinite(network.gain)
+    assert np.all(np.isfinite(network.state_after(np.array([1.0, 0.0, -1.0]), 2.0, 1.0)))

@@ -140,6 +140,13 @@ def test_leakage_through_a_megohm(kind, cents):
     assert cost_cents(lone(1e3, 999e3), 5.0) == pytest.approx(0.0, abs=1e-9)
 
 
+# Source: data sheets of X7R parts: 1000 Mohm uF or 100 Gohm, the lesser.
+@pytest.mark.parametrize(("farads", "ohms"), [(1e-9, 100e9), (10e-9, 100e9), (1e-6, 1e9)])
+def test_insulation_of_x7r_has_a_ceiling(farads, ohms):
+    leakage = Capacitor("c", farads, "x7r").leakage_siemens
+    assert leakage == pytest.approx(1 / ohms, rel=1e-12)
+
+
 # Source: aluminium electrolytics are specified to leak at most 0.01 C V (data sheets), a typical
 # part a tenth of it (common practice): 5 nA from 1 uF at 5 V.
 def test_leakage_of_an_electrolytic():
