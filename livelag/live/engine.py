@@ -154,6 +154,7 @@ class Engine:
         out: NDArray[np.float32],
         inputs: NDArray[np.float32] | None = None,
         dropped: bool = False,
+        entered_s: float | None = None,
     ) -> None:
         """Fill one block; see the module's text for the contract.
 
@@ -161,12 +162,13 @@ class Engine:
             out: (frames, channels) to be written, all of it.
             inputs: (frames, channels) from the input side, if the stream has one.
             dropped: whether the sound system says it missed a block before this one.
+            entered_s: when the sound system made the call, if that is known better than now.
         """
         began = self.now()
         self.meters.dropouts += dropped
         try:
             if self.error is None:
-                self._fill(out, inputs, began)
+                self._fill(out, inputs, began if entered_s is None else entered_s)
         except Exception as error:
             self.error = error
         if self.error is not None:
@@ -177,10 +179,10 @@ class Engine:
         self.meters.worst_load = max(self.meters.worst_load, load)
 
     def _fill(
-        self, out: NDArray[np.float32], inputs: NDArray[np.float32] | None, began: float
+        self, out: NDArray[np.float32], inputs: NDArray[np.float32] | None, entered_s: float
     ) -> None:
         frames, meters = len(out), self.meters
-        self.clock.update(meters.frames, began)
+        self.clock.update(meters.frames, entered_s)
         self._collect(frames)
         events = self._schedule.take(meters.frames, meters.frames + frames)
         if self._panicked:
@@ -228,7 +230,7 @@ class Engine:
         if self.routing.volts_out is not None:
             self.routing.volts_out.write(out, glide, ramp)
         self._last_sample = float(audio[-1])
-        self.meters.peak = max(self.meters.peak, float(audio.max()), -float(audio.min()))
+        self.meters.peak = max(self.meters.peak, self.patch.peak * max(fade, self._fade))
 
     def _fade_error(self, out: NDArray[np.float32]) -> None:
         """Lead the last sample down to silence in one block, then finish."""

@@ -16,6 +16,7 @@ from livelag.live.engine import Engine
 from livelag.live.quiet import stderr_silenced
 
 SILENT_TOO_LONG_S = 1.5
+MOST_WAIT_S = 0.05
 
 
 class SoundStream:
@@ -102,14 +103,25 @@ class SoundStream:
         with stderr_silenced(), suppress(self._sounddevice.PortAudioError):
             self._stream.close(ignore_errors=True)
 
+    def _entered_s(self, when: Any) -> float:
+        """When the sound system made the call, on the engine's clock.
+
+        Python may have waited for its interpreter since; the stream's own time tells how long.
+        Where the system does not keep that time, it is now.
+        """
+        now_s = self._engine.now()
+        waited_s = self._stream.time - when.currentTime
+        usable = when.currentTime > 0.0 and 0.0 <= waited_s < MOST_WAIT_S
+        return now_s - waited_s if usable else now_s
+
     def _output(self, out: Any, frames: int, when: Any, status: Any) -> None:
-        self._engine.fill(out, None, bool(status.output_underflow))
+        self._engine.fill(out, None, bool(status.output_underflow), self._entered_s(when))
         if self._engine.finished:
             raise self._sounddevice.CallbackStop
 
     def _duplex(self, inputs: Any, out: Any, frames: int, when: Any, status: Any) -> None:
         missed = bool(status.output_underflow or status.input_overflow)
-        self._engine.fill(out, np.asarray(inputs), missed)
+        self._engine.fill(out, np.asarray(inputs), missed, self._entered_s(when))
         if self._engine.finished:
             raise self._sounddevice.CallbackStop
 

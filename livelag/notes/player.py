@@ -156,8 +156,7 @@ class Player:
 
     def _current(self) -> tuple[float, bool, int, bool, int | None]:
         bypassed = not self._forced and (
-            (self._heed_switch and not self._portamento)
-            or (self._legato_only and not self._legato)
+            (self._heed_switch and not self._portamento) or (self._legato_only and not self._legato)
         )
         volts = self._note_volts + self._bend_volts
         return volts, self._note is not None, self._velocity, bypassed, self._note

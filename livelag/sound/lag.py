@@ -37,8 +37,9 @@ from livelag.circuit.stage import GlideStage, Setting
 from livelag.errors import UnknownNameError
 
 METHODS = ("exact", "bilinear", "ramp")
-_CACHED_SETTINGS = 512  # a controller's 128 positions in four ranges
-_ROW = 512  # frames per row of powers; rows count from the start of a run, never from a block
+_CACHED_SETTINGS = 256  # a controller's 128 positions in two ranges
+_SHORT = 32  # a divisor of _ROW
+_ROW = 1024  # frames per row of powers; rows count from the start of a run, never from a block
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,12 +75,16 @@ class _Run:
         key_volts: the key.
         source: what it is worth as a source.
         deviation: (driven,) y[0] - y_inf of equation 4.
+        settled_bus: the bus once all has settled.
+        decays: per mode that the bus shows, its weight there at frame 0, p, and its powers.
         frames: how long it has been held.
     """
 
     key_volts: float
     source: float
     deviation: Vector
+    settled_bus: float
+    decays: tuple[tuple[float, float, Vector], ...]
     frames: int = 0
 
 
@@ -105,11 +110,16 @@ def _coefficients(
 
 
 def _powers(poles: Vector) -> NDArray[np.float64]:
-    """Rows of p^0 to p^(_ROW - 1)."""
-    factors = np.repeat(poles[:, np.newaxis], _ROW, axis=1)
-    factors[:, 0] = 1.0
-    powers: NDArray[np.float64] = np.multiply.accumulate(factors, axis=1)
-    return powers
+    """(driven, _ROW) p^0 to p^(_ROW - 1), as p^i p^(32 j): two short runs and their products."""
+    column = poles[:, np.newaxis]
+    short = np.repeat(column, _SHORT, axis=1)
+    short[:, 0] = 1.0
+    np.multiply.accumulate(short, axis=1, out=short)
+    long = np.repeat(short[:, -1:] * column, _ROW // _SHORT, axis=1)
+    long[:, 0] = 1.0
+    np.multiply.accumulate(long, axis=1, out=long)
+    powers: NDArray[np.float64] = long[:, :, np.newaxis] * short[:, np.newaxis, :]
+    return powers.reshape(len(poles), _ROW)
 
 
 class Lag:
@@ -234,27 +244,33 @@ class Lag:
         run = self._run
         if run is None or run.key_volts != key_volts:
             run = self._begin_run(key_volts)
-        filters = self._filters
-        network = filters.network
-        first, last = run.frames // _ROW, (run.frames + frames - 1) // _ROW
-        rows = np.arange(first, last + 1) * _ROW
-        settled = network.readout[: network.driven_count] @ filters.settled + network.feedthrough
-        bus = np.full((len(rows), _ROW), settled * run.source)
-        for mode, pole in enumerate(filters.poles):
-            weight = network.readout[mode] * run.deviation[mode]
-            if weight:
-                bus += (weight * pole**rows)[:, np.newaxis] * filters.powers[mode]
-        start = run.frames - first * _ROW
+        bus = np.full(frames, run.settled_bus)
+        done = 0
+        while done < frames:
+            row, start = divmod(run.frames + done, _ROW)
+            count = min(_ROW - start, frames - done)
+            part = bus[done : done + count]
+            for weight, pole, powers in run.decays:
+                part += weight * pole ** (row * _ROW) * powers[start : start + count]
+            done += count
         run.frames += frames
         self._frames_since += frames
-        return self.stage.output_volts(bus.ravel()[start : start + frames])
+        return self.stage.output_volts(bus)
 
     def _begin_run(self, key_volts: float) -> _Run:
         self._end_run()
         filters = self._filters
+        network, n = filters.network, filters.network.driven_count
         source = self._source = float(self.stage.source_volts(key_volts, self.setting))
-        first = self._delay + filters.b0 * source
-        self._run = _Run(key_volts, source, first - filters.settled * source)
+        deviation = self._delay + filters.b0 * source - filters.settled * source
+        per_volt = float(network.readout[:n] @ filters.settled) + network.feedthrough
+        weights = network.readout[:n] * deviation
+        decays = tuple(
+            (float(weight), float(pole), powers)
+            for weight, pole, powers in zip(weights, filters.poles, filters.powers, strict=True)
+            if weight
+        )
+        self._run = _Run(key_volts, source, deviation, per_volt * source, decays)
         return self._run
 
     def process(self, key_volts: NDArray[np.float64]) -> NDArray[np.float64]:

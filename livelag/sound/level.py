@@ -22,6 +22,7 @@ class Level:
 
     Attributes:
         ceiling_frames: frames that the ceiling has held down since the last reset.
+        peak: greatest absolute sample of the last block.
     """
 
     def __init__(self, sample_rate_hz: float) -> None:
@@ -37,6 +38,7 @@ class Level:
         self._plan: list[tuple[float, int]] = []  # targets to come, each with its frames
         self._done = 0
         self.ceiling_frames = 0
+        self.peak = 0.0
 
     @property
     def gain(self) -> float:
@@ -89,7 +91,8 @@ class Level:
 
     def limit(self, audio: NDArray[np.float64]) -> None:
         """Hold a block under the ceiling, in place, and count the frames that needed it."""
-        peak = max(float(audio.max()), -float(audio.min()))
-        if peak > self._ceiling:
+        self.peak = max(float(audio.max()), -float(audio.min()))
+        if self.peak > self._ceiling:
+            self.peak = self._ceiling
             self.ceiling_frames += int(np.count_nonzero(np.abs(audio) > self._ceiling))
             np.clip(audio, -self._ceiling, self._ceiling, out=audio)

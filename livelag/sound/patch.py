@@ -200,6 +200,11 @@ class Patch:
         self._lag.reset(key_volts)
 
     @property
+    def peak(self) -> float:
+        """Greatest absolute sample of the last block."""
+        return self._level.peak
+
+    @property
     def silent(self) -> bool:
         """Whether nothing sounds and nothing is on its way out."""
         waiting = self._gains[: self.latency_frames]
