@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import gc
 import math
+import os
 import sys
 import time
-from contextlib import ExitStack
+from contextlib import ExitStack, suppress
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
@@ -222,7 +223,9 @@ class _undisturbed:  # noqa: N801 - used like a function
     """Keeps this process's own threads out of the callback's way while sound runs.
 
     Python hands the interpreter over every 5 ms by default, which is longer than a block; and
-    the garbage collector may stop everything. Reference counts still free memory.
+    the garbage collector may stop everything (reference counts still free memory). A thread that
+    holds the interpreter and is set aside by the system for another program holds up the sound
+    as well, so where the system allows it this thread is not set aside for ordinary programs.
     """
 
     def __enter__(self) -> None:
@@ -231,8 +234,18 @@ class _undisturbed:  # noqa: N801 - used like a function
         gc.collect()
         gc.freeze()
         gc.disable()
+        _schedule(real_time=True)
 
     def __exit__(self, *error: object) -> None:
+        _schedule(real_time=False)
         gc.enable()
         gc.unfreeze()
         sys.setswitchinterval(self._interval_s)
+
+
+def _schedule(*, real_time: bool) -> None:
+    """Lowest real-time priority for this thread, or ordinary; where the system allows it."""
+    if sys.platform == "linux":
+        policy = os.SCHED_RR | os.SCHED_RESET_ON_FORK if real_time else os.SCHED_OTHER
+        with suppress(OSError):
+            os.sched_setscheduler(0, policy, os.sched_param(1 if real_time else 0))
