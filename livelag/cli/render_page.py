@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +13,7 @@ from livelag.cli.render_job import RenderJob
 from livelag.cli.render_set import remarks, settings_asked, sound_name
 from livelag.errors import FileError
 from livelag.files import WholeFolder, cannot_write
+from livelag.notes.settings import Controller
 from livelag.report.curve import CurveForPicture
 from livelag.report.curve_drawing import CurveDrawing, draw_curve
 from livelag.report.listening_page import Page, Sound, page_files, page_html
@@ -54,8 +56,8 @@ def render_page(args: argparse.Namespace, job: RenderJob) -> None:
             )
         ]
         page = Page(
-            job.stage.title, job.stage.about, job.song.title, job.song.note_count, job.method,
-            tuple(sounds),
+            job.stage.title, job.stage.about, job.song.title, job.song.note_count,
+            _moves_controls(job), job.method, tuple(sounds),
         )  # fmt: skip
         (work / PAGE_NAME).write_text(page_html(page), encoding="utf-8", newline="\n")
         size = sum(path.stat().st_size for path in work.iterdir())
@@ -68,7 +70,9 @@ def render_page(args: argparse.Namespace, job: RenderJob) -> None:
 def _render_with_curve(job: RenderJob, path: Path) -> tuple[dict[str, Any], CurveDrawing]:
     curve = CurveForPicture(job.rate_hz, frames_for(job.song.duration_s, job.rate_hz))
     answer = job.run(path, more_sinks=[curve])
-    return answer, draw_curve(*curve.curve, answer["seconds"], job.stage.scale)
+    stage, setting = job.stage, job.setting
+    settled = partial(stage.settled_volts, setting=setting)
+    return answer, draw_curve(*curve.curve, answer["seconds"], stage.scale, settled)
 
 
 def _sound(number: int, name: str, job: RenderJob, curve: CurveDrawing) -> Sound:
@@ -82,6 +86,16 @@ def _sound(number: int, name: str, job: RenderJob, curve: CurveDrawing) -> Sound
         stage.octave_arrival_s(setting),
         curve,
     )
+
+
+def _moves_controls(job: RenderJob) -> bool:
+    """Whether the music itself turns the pot, flips the range or switches the glide."""
+    keys = job.player_settings
+    moving = {keys.pot_controller, keys.pot_fine_controller, keys.range_controller}
+    if keys.heed_portamento_switch:
+        moving.add(Controller.PORTAMENTO_SWITCH)
+    messages = (timed.message for timed in job.song.messages)
+    return any(m.type == "control_change" and m.control in moving for m in messages)
 
 
 def _older_page(folder: Path) -> frozenset[str]:

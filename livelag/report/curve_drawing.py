@@ -6,6 +6,7 @@ shown at.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,8 +18,8 @@ from livelag.units import note_name, volts_to_cents, volts_to_note
 
 Samples = NDArray[np.float64]
 
-WIDTH, HEIGHT = 480.0, 250.0
-LEFT, RIGHT, TOP, BOTTOM = 44.0, 434.0, 14.0, 208.0  # of the field that holds the lines
+WIDTH, HEIGHT = 480.0, 244.0
+LEFT, RIGHT, TOP, BOTTOM = 44.0, 434.0, 22.0, 212.0  # of the field that holds the lines
 LISTED_STEPS = 60  # a longer table is no help to anyone
 NAMED_WITHIN_CENTS = 3.0  # a note named without cents is no further off
 
@@ -44,15 +45,16 @@ class KeyStep:
         start_s: seconds from the beginning.
         note: the key in words.
         key_volts: volts before the glide.
-        arrival_s: seconds until the glide is in tune for the rest of it; None if it never is.
-        error_cents: how far off the glide is at its end.
+        arrival_s: seconds until the glide is within 5 cents of where it settles, and stays
+            there for the rest of it; None if it never is.
+        to_go_cents: where the glide is at its end, less where it would settle.
     """
 
     start_s: float
     note: str
     key_volts: float
     arrival_s: float | None
-    error_cents: float
+    to_go_cents: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,12 +85,17 @@ class CurveDrawing:
 
     @property
     def late_count(self) -> int:
-        """How many of the listed steps end out of tune."""
+        """How many of the listed steps end before the glide arrives."""
         return sum(step.arrival_s is None for step in self.steps)
 
 
 def draw_curve(
-    times_s: Samples, key_volts: Samples, glide_volts: Samples, seconds: float, scale: Scale
+    times_s: Samples,
+    key_volts: Samples,
+    glide_volts: Samples,
+    seconds: float,
+    scale: Scale,
+    settled_volts: Callable[[float], float],
 ) -> CurveDrawing:
     """Lay a curve out in the drawing's units.
 
@@ -98,6 +105,7 @@ def draw_curve(
         glide_volts: (points,) volts after it.
         seconds: how long the sound is.
         scale: what the volts mean.
+        settled_volts: key volts -> glide volts after holding them for ever.
     """
     low, high = _span(key_volts, glide_volts, scale)
 
@@ -119,7 +127,7 @@ def draw_curve(
         tuple(Tick(float(x(v)), f"{v:g}") for v in _round_values(0.0, seconds)),
         tuple(Tick(float(y(v)), f"{v:g}") for v in _round_values(low, high)),
         tuple(Tick(float(y(volts)), name) for volts, name in marks),
-        _steps(times_s, key_volts, glide_volts, starts, scale),
+        _steps(times_s, key_volts, glide_volts, starts, scale, settled_volts),
         len(starts),
         seconds / len(times_s),
     )
@@ -161,16 +169,19 @@ def _steps(
     glide_volts: Samples,
     starts: NDArray[np.intp],
     scale: Scale,
+    settled_volts: Callable[[float], float],
 ) -> tuple[KeyStep, ...]:
     ends = np.append(starts[1:], len(times_s))
-    error = volts_to_cents(glide_volts - key_volts, scale.volts_per_octave)
     found = []
     for start, end in zip(starts[:LISTED_STEPS], ends[:LISTED_STEPS], strict=True):
-        outside = np.flatnonzero(np.abs(error[start:end]) > ARRIVAL_TOLERANCE_CENTS)
+        began, volts = float(times_s[start]), float(key_volts[start])
+        to_go = volts_to_cents(
+            glide_volts[start:end] - settled_volts(volts), scale.volts_per_octave
+        )
+        outside = np.flatnonzero(np.abs(to_go) > ARRIVAL_TOLERANCE_CENTS)
         settled = start if len(outside) == 0 else start + outside[-1] + 1
-        arrival = None if settled == end else float(times_s[settled] - times_s[start])
-        began, volts, off = float(times_s[start]), float(key_volts[start]), float(error[end - 1])
-        found.append(KeyStep(began, _note(volts, scale), volts, arrival, off))
+        arrival = None if settled == end else float(times_s[settled]) - began
+        found.append(KeyStep(began, _note(volts, scale), volts, arrival, float(to_go[-1])))
     return tuple(found)
 
 

@@ -70,6 +70,7 @@ class Page:
         about: a sentence or two on the stage; may be empty.
         tune: what is played.
         note_count: how many notes begin.
+        moves_controls: whether the tune itself turns the pot or flips a switch.
         method: ``exact`` or ``bilinear``.
         sounds: one or more.
     """
@@ -78,6 +79,7 @@ class Page:
     about: str
     tune: str
     note_count: int
+    moves_controls: bool
     method: str
     sounds: tuple[Sound, ...]
 

@@ -11,7 +11,7 @@
     diamond: article.querySelector("g.place .place-mark"),
     line: [...article.querySelector("polyline.glide-line").points],
     badge: article.querySelector(".playing"),
-    name: article.querySelector("h2").textContent.replace(/\s+/g, " ").trim(),
+    name: article.dataset.name,
   }));
   let current = 0;
   let before = null;
@@ -194,4 +194,5 @@
   byId("copy").addEventListener("click", copy);
   compose();
   for (const part of document.querySelectorAll(".scripted")) part.hidden = false;
+  document.querySelector(".unscripted").hidden = true;
 })();
