@@ -11,7 +11,7 @@ from livelag.cli.common import console, new_table, seconds, show_json, warn
 from livelag.cli.parallel import in_parallel
 from livelag.cli.render_job import RenderJob
 from livelag.cli.render_set import remarks, settings_asked, sound_name
-from livelag.errors import FileError
+from livelag.errors import FileError, InputError
 from livelag.files import WholeFolder, cannot_write
 from livelag.notes.settings import Controller
 from livelag.report.curve import CurveForPicture
@@ -37,11 +37,13 @@ def render_page(args: argparse.Namespace, job: RenderJob) -> None:
     """Render every setting asked for into a folder with a page that plays them, whole or not.
 
     Raises:
-        InputError: if a setting is out of range.
+        InputError: if a setting is out of range, or no folder is named.
         UnknownNameError: if there is no such range.
         FileError: if the folder holds anything but an older page, or cannot be written.
     """
     _fill_in(args)
+    if not args.page:
+        raise InputError("--page is ''; name a folder")
     folder = Path(args.page)
     jobs = settings_asked(args, job)
     older = _older_page(folder)
@@ -103,11 +105,10 @@ def _older_page(folder: Path) -> frozenset[str]:
 
     Hidden files, such as those that a desktop leaves, are let be.
     """
-    if not folder.is_dir():
-        return frozenset()
+    there, text = set(), ""
     try:
-        there = {path.name for path in folder.iterdir() if not path.name.startswith(".")}
-        text = ""
+        if folder.is_dir():
+            there = {path.name for path in folder.iterdir() if not path.name.startswith(".")}
         if (folder / PAGE_NAME).is_file():
             text = (folder / PAGE_NAME).read_text(encoding="utf-8", errors="replace")
     except OSError as error:
