@@ -126,21 +126,21 @@ def _older_page(folder: Path) -> frozenset[str]:
 def _show(args: argparse.Namespace, job: RenderJob, answer: dict[str, Any]) -> None:
     if args.json:
         show_json(answer)
-    else:
-        table = new_table(
-            "number", "range", "rotation", "time constant", "file", title=job.stage.title,
-            right=("number", "rotation", "time constant"),
+        return
+    table = new_table(
+        "number", "range", "rotation", "time constant", "file", title=job.stage.title,
+        right=("number", "rotation", "time constant"),
+    )  # fmt: skip
+    for row in answer["renders"]:
+        table.add_row(
+            str(row["number"]), row["range"], f"{row['rotation']:g}",
+            seconds(row["time_constant_s"]), Path(row["out"]).name,
         )  # fmt: skip
-        for row in answer["renders"]:
-            table.add_row(
-                str(row["number"]), row["range"], f"{row['rotation']:g}",
-                seconds(row["time_constant_s"]), Path(row["out"]).name,
-            )  # fmt: skip
-        out = console()
-        out.print(table)
-        out.print(
-            f"{answer['page']} plays these in any browser, offline: open it, or send its whole "
-            f"folder ({answer['bytes'] / 1e6:.1f} MB)."
-        )
+    out = console()
+    out.print(table)
+    out.print(
+        f"{answer['page']} plays these beside their pitch curves, in any browser of today, offline: "
+        f"send the whole folder, {answer['bytes'] / 1e6:.1f} MB."
+    )
     for sentence in remarks(job, answer["renders"]):
         warn(sentence)
