@@ -138,9 +138,8 @@ def _show(args: argparse.Namespace, job: RenderJob, answer: dict[str, Any]) -> N
         )  # fmt: skip
     out = console()
     out.print(table)
-    out.print(
-        f"{answer['page']} plays these beside their pitch curves, in any browser of today, offline: "
-        f"send the whole folder, {answer['bytes'] / 1e6:.1f} MB."
-    )
+    size = f"{answer['bytes'] / 1e6:.1f} MB"
+    out.print(f"{answer['page']} plays these beside their pitch curves, offline, in any browser")
+    out.print(f"of today. To pass it on, send the whole folder: {size}.")
     for sentence in remarks(job, answer["renders"]):
         warn(sentence)

@@ -120,7 +120,9 @@ def test_keys_play_and_stop_and_only_one_sounds(page):
     assert page.run("return document.activeElement.id") == "sound-3"
     press(page, "n")
     wait_playing(page, 4)
-    press(page, "n")
+    press(page, "b")
+    wait_playing(page, 3)
+    press(page, "n", "n")
     wait_playing(page, 1)
     press(page, "p")
     wait_playing(page, 4)
@@ -139,6 +141,15 @@ def test_keys_play_and_stop_and_only_one_sounds(page):
     wait_for(lambda: place(page, 2) == 0.0)
     press(page, "4", Keys.ESCAPE)
     wait_playing(page)
+
+
+def test_keys_in_a_burst_leave_the_last_sound_alone(page):
+    ready(page)
+    press(page, "1", "2", "3", "4", "p", "p")
+    wait_playing(page, 2)
+    begun = place(page, 2)
+    wait_for(lambda: place(page, 2) > begun + 0.2)
+    assert playing(page) == [2]
 
 
 def test_moving_on_starts_at_the_beginning_if_asked(page):

@@ -72,6 +72,7 @@
   for (const sound of sounds) {
     sound.audio.volume = 0.3;
     sound.audio.addEventListener("play", () => {
+      if (!isPlaying(sound)) return; // stopped again before this event came
       for (const other of sounds) if (other !== sound) other.audio.pause();
       makeCurrent(sound.index);
       tell();
