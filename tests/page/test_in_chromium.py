@@ -257,16 +257,19 @@ def test_the_choice_is_text_to_copy(page):
 # --- every screen -----------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize(("width", "height"), [(320, 640), (390, 844), (768, 1024), (1200, 800)])
+@pytest.mark.parametrize(("width", "height"), [(320, 640), (390, 844), (820, 1180), (1200, 800)])
 def test_nothing_sticks_out_sideways(page, made, width, height):
     page.show(made / "index.html", width=width, height=height)
     page.run("document.querySelectorAll('details').forEach(d => d.open = true)")
-    assert page.run("return document.documentElement.scrollWidth") <= width
-    widest = page.run(
-        "return Math.max(...[...document.querySelectorAll('body > *, article > *')]"
-        ".map(e => e.getBoundingClientRect().right))"
-    )
-    assert widest <= width
+    texts = "document.querySelectorAll('h1, h2, dd, .piece').forEach(e => e.textContent = '%s')"
+    for script in ("", texts % ("long" * 40), texts % ("long " * 40)):
+        page.run(script)
+        assert page.run("return document.documentElement.scrollWidth") <= width
+        widest = page.run(
+            "return Math.max(...[...document.querySelectorAll('body > *, article *:not(td, th)')]"
+            ".filter(e => !e.closest('.wide, .unseen')).map(e => e.getBoundingClientRect().right))"
+        )
+        assert widest <= width
     least = page.run(
         "return Math.min(...[...document.querySelectorAll('.curve text')]"
         ".map(t => t.getBoundingClientRect().height))"
