@@ -72,7 +72,8 @@
   for (const sound of sounds) {
     sound.audio.volume = 0.3;
     sound.audio.addEventListener("play", () => {
-      if (!isPlaying(sound)) return; // stopped again before this event came
+      // It may have been stopped again before this event came.
+      if (!isPlaying(sound)) return;
       for (const other of sounds) if (other !== sound) other.audio.pause();
       makeCurrent(sound.index);
       tell();
