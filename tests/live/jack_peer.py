@@ -19,7 +19,9 @@ PLAN keys, all but `name` optional:
     out         where to write the recording: float32, shape (frames, channels)
 
 "done" holds `start_frame` and `start_s`, `xruns`, `lost_blocks` (plan frames the server skipped;
-the recording has zeros there) and `events`: for each [frame, ideal seconds, handed-over seconds].
+the recording has zeros there), `stalls` (plan frames at which the server was more than STALL_S
+late or had skipped; its own clock needs a while to settle after one) and `events`: for each
+[frame, ideal seconds, handed-over seconds].
 The ideal is the frame's time on JACK's own clock, CLOCK_MONOTONIC_RAW smoothed by a loop, and
 good for differences only. Handed over is when this client was done with the cycle, which sets off
 the clients that listen to it, on time.perf_counter's clock, and good for any process here.
@@ -34,6 +36,8 @@ from pathlib import Path
 
 import jack
 import numpy as np
+
+STALL_S = 0.001
 
 
 class CycleTimes:
@@ -78,6 +82,7 @@ class Peer:
         self.next_event = self.burst_at = 0
         self.sent = []
         self.xruns = self.lost_blocks = 0
+        self.stalls = []
         self.error = None
         self.gone = False
         self.client.set_process_callback(self.process)
@@ -124,9 +129,12 @@ class Peer:
         frame, now_s = self.cycle_times()
         if self.start is None:
             self.start, self.start_s, self.expected = frame, now_s, frame
-        self.lost_blocks += (frame - self.expected) // frames
+        lost_blocks = (frame - self.expected) // frames
+        self.lost_blocks += lost_blocks
         self.expected = frame + frames
         offset = frame - self.start
+        if lost_blocks or time.clock_gettime(time.CLOCK_MONOTONIC_RAW) - now_s > STALL_S:
+            self.stalls.append(offset)
         if offset >= self.frames:
             self.finished = True
             return
@@ -169,6 +177,7 @@ class Peer:
                     "burst_events": self.burst_at,
                     "xruns": self.xruns,
                     "lost_blocks": self.lost_blocks,
+                    "stalls": self.stalls,
                 }
             )
             sys.stdin.readline()

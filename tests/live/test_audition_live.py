@@ -25,6 +25,9 @@ FULL_SCALE_V = 10.0
 ON, OFF, CONTROL = 0x90, 0x80, 0xB0
 PORTS = ["PortAudio:out_0", "PortAudio:out_1"]
 WARM_UP = 16  # a port's first messages may come late
+MOST_RUNS = 6
+LEAST_KEYS = 15
+SETTLES_S = 0.5  # the server's clock, after a stall
 
 
 @pytest.fixture
@@ -85,15 +88,21 @@ def score(block):
     return events, keys, glide_at, flip_at
 
 
-def added_jitter_s(delays, sent, keys):
+def added_jitter_s(delays, report, keys):
     """What livelag adds: change of delay from key to key, less the change in the driver's lateness.
 
     The driver hands a block's messages over when the server gets round to it, which the peer
-    notes for every message.
+    notes for every message. The server's own clock tells when it should have; after a stall that
+    clock has to settle, so keys soon after one measure nothing and are left out.
     """
-    late = {frame: handed_s - ideal_s for frame, ideal_s, handed_s in sent}
+    late = {frame: handed_s - ideal_s for frame, ideal_s, handed_s in report["events"]}
+    stalls = np.array(report["stalls"])
+    settled = [
+        not np.any((stalls > f - RATE // 50) & (stalls < f + SETTLES_S * RATE)) for f in keys
+    ]
     own = delays / RATE - np.array([late.get(frame, np.nan) for frame in keys])
-    return np.abs(np.diff(own))
+    changes = np.abs(np.diff(np.where(settled, own, np.nan)))
+    return changes[np.isfinite(changes)]
 
 
 @pytest.mark.parametrize("block", [64, 128, 512])
@@ -101,16 +110,23 @@ def test_keys_sound_on_time_in_tune_with_the_stages_glide(
     jack_server, jack_peer, audition, tmp_path, block
 ):
     server = jack_server(block=block)
-    for tries_left in (2, 1, 0):
+    jitter_s = np.empty(0)
+    for runs_left in reversed(range(MOST_RUNS)):  # a busy machine can spoil a run, not every one
         try:
-            check_one_run(server, jack_peer, audition, tmp_path, block)
-            return
+            more_s = check_one_run(server, jack_peer, audition, tmp_path, block)
         except AssertionError:
-            if not tries_left:  # a busy machine can spoil a run, but not every run
+            if not runs_left:
                 raise
+        else:
+            jitter_s = np.append(jitter_s, more_s)
+            if len(jitter_s) >= LEAST_KEYS:
+                break
+    assert len(jitter_s) >= LEAST_KEYS, "the server stalled too often to measure anything"
+    assert np.mean(jitter_s < 1e-4) >= 0.85, jitter_s
 
 
 def check_one_run(server, jack_peer, audition, tmp_path, block):
+    """Plays, listens, checks; returns the jitter of keys that the server's stalls left alone."""
     playing = audition(
         server, "ideal", "--rotation", 0, "--waveform", "sine", "--block", block,
         "--cv-out", 2, "--full-scale-volts", FULL_SCALE_V,
@@ -136,8 +152,6 @@ def check_one_run(server, jack_peer, audition, tmp_path, block):
     late = int(np.median(delays))
     assert block <= late <= answer["latency_s"] * RATE + 2 * block
     assert np.mean(np.abs(delays - late) < block) > 0.8
-    jitter_s = added_jitter_s(delays, report["events"], measured)
-    assert np.nanmean(jitter_s < 1e-4) >= 0.85, jitter_s
 
     # The pitch of every note, from its second half.
     for frame, note in keys[WARM_UP:]:
@@ -157,6 +171,7 @@ def check_one_run(server, jack_peer, audition, tmp_path, block):
     after = volts[flip_at : flip_at + 6 * block + 1000]
     expected = 2.0 * 330e-9 / (330e-9 + 4.7e-6)
     assert after[after > 0.0].min() == pytest.approx(expected, abs=0.001)
+    return added_jitter_s(delays, report, measured)
 
 
 def test_a_killed_keyboard_leaves_no_hanging_note(jack_server, jack_peer, audition, tmp_path):
