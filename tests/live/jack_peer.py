@@ -15,6 +15,8 @@ PLAN keys, all but `name` optional:
                 that in every block, over and over
     frames      length of the plan (default: last event, plus a block)
     send_to     input ports, by name or regular expression, to connect `name:out` to
+    sound       float32 .npy of shape (frames,), played on `name:sound` from the start, then silence
+    sound_to    audio input ports, by name or regular expression, to connect `name:sound` to
     record_from audio output ports, likewise, one recorded channel for each match
     out         where to write the recording: float32, shape (frames, channels)
 
@@ -73,6 +75,11 @@ class Peer:
         last = self.events[-1][0] if self.events else 0
         self.frames = int(plan.get("frames", last + self.block))
         self.midi = self.client.midi_outports.register("out")
+        self.sound = np.zeros(0, np.float32)
+        self.speaker = None
+        if "sound" in plan:
+            self.sound = np.load(plan["sound"])
+            self.speaker = self.client.outports.register("sound")
         self.inputs = []
         self.recording = np.zeros((self.frames, 0), np.float32)
         self.start = None
@@ -100,6 +107,9 @@ class Peer:
         for pattern in self.plan.get("send_to", []):
             for port in self.wait_for(pattern, is_midi=True, is_input=True):
                 self.client.connect(self.midi, port)
+        for pattern in self.plan.get("sound_to", []):
+            for port in self.wait_for(pattern, is_audio=True, is_input=True):
+                self.client.connect(self.speaker, port)
         for pattern in self.plan.get("record_from", []):
             for port in self.wait_for(pattern, is_audio=True, is_output=True):
                 self.inputs.append(self.client.inports.register(f"in_{len(self.inputs) + 1}"))
@@ -116,6 +126,8 @@ class Peer:
     def process(self, frames):
         try:
             self.midi.clear_buffer()
+            if self.speaker is not None:
+                self.speaker.get_array()[:] = 0.0
             if self.armed and not self.finished:
                 before = len(self.sent)
                 self.play(frames)
@@ -154,6 +166,9 @@ class Peer:
             self.sent.append([offset + within, now_s + within / self.client.samplerate])
             self.next_event += 1
         here = min(frames, self.frames - offset)
+        sound = self.sound[offset : offset + frames]
+        if len(sound):
+            self.speaker.get_array()[: len(sound)] = sound
         for channel, port in enumerate(self.inputs):
             self.recording[offset : offset + here, channel] = port.get_array()[:here]
 

@@ -11,6 +11,7 @@ import time
 
 import numpy as np
 import pytest
+import scipy.signal
 import soundfile
 from audition_process import Audition
 
@@ -172,6 +173,52 @@ def check_one_run(server, jack_peer, audition, tmp_path, block):
     expected = 2.0 * 330e-9 / (330e-9 + 4.7e-6)
     assert after[after > 0.0].min() == pytest.approx(expected, abs=0.001)
     return added_jitter_s(delays, report, measured)
+
+
+def test_volts_from_outside_glide_as_ramps_between_samples(
+    jack_server, jack_peer, audition, tmp_path
+):
+    """What comes out is what scipy.signal.lsim says of 1/(1 + s tau) with ramps between samples."""
+    server = jack_server(block=512)
+    corners = [
+        (0.0, 0.0),
+        (0.3, 0.0),
+        (0.5, 4.0),
+        (0.7, 4.0),
+        (0.70002, -2.0),
+        (1.2, 1.0),
+        (2.0, 1.0),
+    ]
+    times_s = np.arange(2 * RATE) / RATE
+    volts_in = np.interp(times_s, *zip(*corners, strict=True))
+    np.save(tmp_path / "in.npy", (volts_in / FULL_SCALE_V).astype(np.float32))
+    tau = load_stage("ideal").time_constant_s(Setting(0, 0.5))
+    system = scipy.signal.lti([1.0], [tau, 1.0])
+    _, expected, _ = scipy.signal.lsim(system, volts_in, times_s, interp=True)
+    out = tmp_path / "heard.npy"
+    for runs_left in reversed(range(MOST_RUNS)):
+        playing = audition(
+            server, "ideal", "--rotation", 0.5, "--block", 512, "--cv-in", 1, "--cv-out", 2,
+            "--full-scale-volts", FULL_SCALE_V, midi=False,
+        )  # fmt: skip
+        peer = jack_peer(
+            server, name=f"source {time.monotonic_ns()}", sound=str(tmp_path / "in.npy"),
+            sound_to=["PortAudio:in_0"], record_from=["PortAudio:out_1"], out=str(out),
+            frames=2 * RATE,
+        )  # fmt: skip
+        time.sleep(0.5)  # the mute at the start
+        peer.go()
+        report = peer.done()
+        playing.leave()
+        peer.quit()
+        if not report["lost_blocks"]:
+            break
+        assert runs_left, "the server lost blocks in every run"
+    glide_v = np.load(out)[:, 0].astype(float) * FULL_SCALE_V
+    lags = range(0, 8 * 512, 256)  # whole blocks; a half to see that the others do not fit
+    errors = [np.abs(glide_v[lag:] - expected[: len(expected) - lag]).max() for lag in lags]
+    assert min(errors) < 1e-5
+    assert sorted(errors)[1] > 0.01
 
 
 def test_a_killed_keyboard_leaves_no_hanging_note(jack_server, jack_peer, audition, tmp_path):
