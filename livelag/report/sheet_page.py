@@ -1,0 +1,140 @@
+"""One printed page in millimetres from its top left corner, in black and greys only."""
+
+from __future__ import annotations
+
+from functools import cache
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+MM_PER_INCH = 25.4
+MM_PER_POINT = MM_PER_INCH / 72.0
+PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/ASME Y14.1
+MARGIN_MM = 12.0
+INK, PENCIL, RULE, SHADE = "0.0", "0.35", "0.6", "0.9"
+LEADING = 1.28  # line distance over letter size
+
+
+class Page:
+    """A figure the size of a sheet of paper.
+
+    Attributes:
+        figure: to save.
+        width_mm: of the paper.
+        height_mm: of the paper.
+    """
+
+    def __init__(self, paper: str) -> None:
+        from matplotlib.figure import Figure
+
+        self.width_mm, self.height_mm = PAPERS_MM[paper]
+        self.figure: Figure = Figure(
+            figsize=(self.width_mm / MM_PER_INCH, self.height_mm / MM_PER_INCH), facecolor="white"
+        )
+        self._paper = self.axes_at(0.0, 0.0, self.width_mm, self.height_mm)
+        self._paper.set_axis_off()
+        self._paper.set_xlim(0.0, self.width_mm)
+        self._paper.set_ylim(self.height_mm, 0.0)
+
+    @property
+    def left(self) -> float:
+        """Left edge of what is printed."""
+        return MARGIN_MM
+
+    @property
+    def right(self) -> float:
+        """Right edge of what is printed."""
+        return self.width_mm - MARGIN_MM
+
+    @property
+    def bottom(self) -> float:
+        """Bottom edge of what is printed."""
+        return self.height_mm - MARGIN_MM
+
+    def axes_at(self, left: float, top: float, width: float, height: float) -> Axes:
+        """Axes that fill a rectangle of the page."""
+        return self.figure.add_axes(
+            (
+                left / self.width_mm,
+                1.0 - (top + height) / self.height_mm,
+                width / self.width_mm,
+                height / self.height_mm,
+            )
+        )
+
+    def text(self, x: float, y: float, words: str, size: float = 7.0, **style: Any) -> None:
+        """One line of text whose middle is at ``y``, in points; styles as matplotlib has them."""
+        style = {"va": "center", "ha": "left", "color": INK, **style}
+        self._paper.text(x, y, words, fontsize=size, parse_math=False, **style)
+
+    def paragraph(
+        self, x: float, top: float, width: float, words: str, size: float = 7.0,
+        most_lines: int = 100, **style: Any,
+    ) -> float:  # fmt: skip
+        """Text broken into lines from ``top`` down; returns where it ends."""
+        step = size * MM_PER_POINT * LEADING
+        lines = wrapped(words, width, size, most_lines, bold=style.get("fontweight") == "bold")
+        for number, line in enumerate(lines):
+            self.text(x, top + (number + 0.5) * step, line, size, **style)
+        return top + len(lines) * step
+
+    def line(
+        self, x0: float, y0: float, x1: float, y1: float, weight: float = 0.5, colour: str = RULE
+    ) -> None:
+        """A straight rule, its weight in points."""
+        self._paper.plot([x0, x1], [y0, y1], color=colour, linewidth=weight, solid_capstyle="butt")
+
+    def shade(self, left: float, top: float, width: float, height: float) -> None:
+        """A light grey rectangle behind text."""
+        from matplotlib.patches import Rectangle
+
+        box = Rectangle((left, top), width, height, facecolor=SHADE, edgecolor="none", zorder=0)
+        self._paper.add_patch(box)
+
+    def heading(self, top: float, words: str) -> float:
+        """A heading with a rule under it; returns where what follows may begin."""
+        self.text(self.left, top + 2.2, words, 8.5, fontweight="bold")
+        self.line(self.left, top + 4.6, self.right, top + 4.6, 0.9, INK)
+        return top + 5.8
+
+
+@cache
+def width_mm(words: str, size: float, bold: bool = False) -> float:
+    """How wide a line of text is printed."""
+    from matplotlib.font_manager import FontProperties
+    from matplotlib.textpath import text_to_path
+
+    font = FontProperties(size=size, weight="bold" if bold else "normal")
+    found, _, _ = text_to_path.get_text_width_height_descent(words, font, ismath=False)
+    return float(found) * MM_PER_POINT
+
+
+def fitted(words: str, width: float, size: float, bold: bool = False) -> str:
+    """The text itself, or as much of its beginning as fits with an ellipsis."""
+    if width_mm(words, size, bold) <= width:
+        return words
+    kept = words
+    while kept and width_mm(f"{kept}…", size, bold) > width:
+        kept = kept[:-1]
+    return f"{kept.rstrip()}…"
+
+
+def wrapped(
+    words: str, width: float, size: float, most_lines: int = 100, bold: bool = False
+) -> list[str]:
+    """Text in lines no wider than a width; the last one ends in an ellipsis if some is left out."""
+    lines: list[str] = []
+    left = words.split()
+    while left:
+        if len(lines) == most_lines - 1:
+            lines.append(fitted(" ".join(left), width, size, bold))
+            break
+        taken = 1
+        while taken < len(left) and width_mm(" ".join(left[: taken + 1]), size, bold) <= width:
+            taken += 1
+        # A word wider than the line is cut, for there is nowhere to break it.
+        lines.append(fitted(" ".join(left[:taken]), width, size, bold))
+        left = left[taken:]
+    return lines
