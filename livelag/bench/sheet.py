@@ -29,8 +29,8 @@ from livelag.circuit.parts import require
 from livelag.circuit.stage import GlideStage, Setting
 
 ROTATIONS = (0.0, 0.25, 0.5, 0.75, 1.0)
-MOST_RANGES = 6
-MOST_CAPACITORS = 6
+MOST_RANGES = 5
+MOST_CAPACITORS = 5
 _POINTS = 241
 
 

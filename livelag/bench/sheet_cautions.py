@@ -26,12 +26,15 @@ def cautions(stage: GlideStage, parts: PartList) -> tuple[str, ...]:
 
 
 def _supply(stage: GlideStage) -> str:
-    high, low = stage.supply.positive_v, stage.supply.negative_v
-    rails = f"+{high:g} V and −{-low:g} V" if low < 0.0 else f"+{high:g} V and 0 V"
     return (
-        f"Solder with the supply off and unplugged. Check {rails} at the empty op-amp socket or "
-        "pads first, with the current limited."
+        f"Solder with the supply off and unplugged. Check {_rails(stage)} at the empty op-amp "
+        "socket or pads first, with the current limited."
     )
+
+
+def _rails(stage: GlideStage) -> str:
+    high, low = stage.supply.positive_v, stage.supply.negative_v
+    return f"+{high:g} V and −{-low:g} V" if low < 0.0 else f"+{high:g} V and 0 V"
 
 
 def _polarity(stage: GlideStage, parts: PartList) -> Iterator[str]:
@@ -80,10 +83,9 @@ def _probing(stage: GlideStage) -> str:
 
 
 def _generator(stage: GlideStage) -> str:
-    low, high = stage.supply.negative_v, stage.supply.positive_v
     return (
-        f"Generator: set for a high-impedance load, never beyond {low:g} to {high:g} V; on after "
-        "the supply, off before it."
+        f"Generator: set for a high-impedance load and never beyond {_rails(stage)}; on after the "
+        "supply, off before it."
     )
 
 

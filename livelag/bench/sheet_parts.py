@@ -39,7 +39,9 @@ class PartLine:
     @property
     def value_text(self) -> str:
         """The value as people write it, such as ``4.7 µF``."""
-        return "" if self.value is None else format_value(self.value, self.unit)
+        if self.value is None:
+            return ""
+        return format_value(self.value, self.unit).replace("u", "µ")
 
     @property
     def tolerance_text(self) -> str:
@@ -146,7 +148,8 @@ def _pot(reference: str, pot: Pot) -> PartLine:
 
 def _capacitor(reference: str, part: Capacitor) -> PartLine:
     polarised = part.kind_data.polarised
-    kind = f"{part.kind}, polarised" if polarised else part.kind
+    name = part.kind.upper() if part.kind in ("c0g", "x7r") else part.kind
+    kind = f"{name}, polarised" if polarised else name
     return PartLine(
         reference, f"capacitor {part.name!r}", part.capacitance_f, "F", part.tolerance, kind,
         polarised,

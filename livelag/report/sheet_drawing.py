@@ -6,10 +6,8 @@ contact for each capacitor or resistor that it connects, linked by a dashed line
 
 from __future__ import annotations
 
-import warnings
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from livelag.bench.sheet_parts import PartLine, PartList, contact_ranges
@@ -18,60 +16,75 @@ from livelag.report.sheet_page import INK, LEADING, MM_PER_POINT, PENCIL, Page, 
 if TYPE_CHECKING:
     from livelag.circuit.stage import GlideStage
 
-UNIT_MM = 5.0
+_UNITS_MM = (5.0, 6.0)  # one unit is printed no smaller and no larger
 _SIZE = 6.2  # of letters, in points
-_LINE = _SIZE * MM_PER_POINT * LEADING / UNIT_MM
 _STROKE = 0.9
 _BRANCH = 2.3  # between parallel series resistors
-_ABOVE, _BELOW = 3.5, 7.2  # what the drawing takes above and below the wire
-_AFTER_HOLD = 9.4  # from the end of the capacitors to the right edge
+_ABOVE, _BELOW, _BELOW_CROWDED = 3.5, 6.9, 7.6  # what the drawing takes above and below the wire
+_AFTER_HOLD = 9.0  # from the end of the capacitors to the right edge
 _WIDEST_COLUMN = 5.4
+_IN, _PULL_DOWN, _INPUT_BUFFER, _SERIES = 0.9, 2.3, 3.4, 5.9
 
 
 @dataclass(frozen=True)
 class _Places:
-    """Where things stand along the wire, in units."""
+    """Where things stand along the wire, in units of so many millimetres."""
 
-    pull_down: float
-    input_buffer: float
+    unit_mm: float
     series: tuple[float, float]
     pot: tuple[float, float]
     columns: tuple[float, ...]
     column_width: float
     output_buffer: float
+    width: float
 
 
-def drawing_height_mm(parts: PartList) -> float:
-    """How much of the page the drawing takes."""
-    branches = len(parts.series)
-    below = max(_BELOW, (branches - 1) * _BRANCH + 1.0)
-    return (_ABOVE + below) * UNIT_MM
+def _places(parts: PartList, width_mm: float) -> _Places:
+    """Shares the width out: first to larger symbols, then to the columns of the capacitors."""
+    series = (_SERIES, _SERIES + (5.0 if len(parts.series) > 1 else 2.4))
+    pot = (series[1] + 0.5, series[1] + 4.1)
+    first, count = pot[1] + 0.4, len(parts.capacitors)
+    smallest, largest = _UNITS_MM
+    natural = first + count * _WIDEST_COLUMN + _AFTER_HOLD
+    unit = min(max(width_mm / natural, smallest), largest)
+    column = (width_mm / unit - first - _AFTER_HOLD) / count
+    columns = tuple(first + column * (number + 0.5) for number in range(count))
+    end = first + column * count
+    return _Places(unit, series, pot, columns, column, end + 0.4, width_mm / unit)
+
+
+def _depth(parts: PartList, at: _Places) -> float:
+    """How far the drawing reaches below the wire, in units."""
+    below = _BELOW_CROWDED if _crowded(parts, at) else _BELOW
+    return max(below, (len(parts.series) - 1) * _BRANCH + 1.2)
+
+
+def _crowded(parts: PartList, at: _Places) -> bool:
+    """Whether what is beside a contact must be said elsewhere."""
+    return at.column_width < (4.4 if any(parts.bleeds) else 3.2)
 
 
 def draw_stage(page: Page, top: float, stage: GlideStage, parts: PartList) -> float:
     """Draw the stage across the page from ``top`` down; returns where it ends."""
-    height = drawing_height_mm(parts)
     width = page.right - page.left
+    at = _places(parts, width)
+    height = (_ABOVE + _depth(parts, at)) * at.unit_mm
     axes = page.axes_at(page.left, top, width, height)
-    axes.set_axis_off()
-    drawing = _Drawing(stage, parts, width / UNIT_MM)
+    drawing = _Drawing(stage, parts, at)
     drawing.draw()
-    with warnings.catch_warnings():
-        # Text is placed here; the library would only warn of what it does not use.
-        drawing.symbols.draw(show=False, canvas=axes)
+    drawing.symbols.draw(show=False, canvas=axes)
     for words in drawing.labels:
         axes.text(**words, parse_math=False)
-    axes.set_aspect("auto")
     axes.set_axis_off()
-    axes.set_xlim(0.0, width / UNIT_MM)
-    axes.set_ylim(_ABOVE - height / UNIT_MM, _ABOVE)
+    axes.set_xlim(0.0, at.width)
+    axes.set_ylim(-_depth(parts, at), _ABOVE)
     return top + height
 
 
 class _Drawing:
     """Symbols and labels of one stage."""
 
-    def __init__(self, stage: GlideStage, parts: PartList, width: float) -> None:
+    def __init__(self, stage: GlideStage, parts: PartList, at: _Places) -> None:
         import schemdraw
         from schemdraw import elements
 
@@ -79,28 +92,19 @@ class _Drawing:
         self.symbols: Any = schemdraw.Drawing(show=False)
         self.symbols.config(lw=_STROKE, color="black", margin=0)
         self.labels: list[dict[str, Any]] = []
-        self._stage, self._parts, self._width = stage, parts, width
-
-    @cached_property
-    def _at(self) -> _Places:
-        several = len(self._parts.series) > 1
-        series = (5.6, 10.6 if several else 8.2)
-        pot = (series[1] + 0.6, series[1] + 4.2)
-        first, last = pot[1] + 0.5, self._width - _AFTER_HOLD
-        count = len(self._parts.capacitors)
-        column = min((last - first) / count, _WIDEST_COLUMN)
-        columns = tuple(first + column * (number + 0.5) for number in range(count))
-        return _Places(1.7, 2.9, series, pot, columns, column, first + column * count + 0.5)
+        self._stage, self._parts, self._at = stage, parts, at
+        self._is_crowded = _crowded(parts, at)
+        self._line = _SIZE * MM_PER_POINT * LEADING / at.unit_mm
 
     def draw(self) -> None:
         """Everything, from left to right."""
         at, parts = self._at, self._parts
-        self._terminal(0.6, "IN", "probe 1", after=False)
+        self._terminal(_IN, "IN", "probe 1")
         if parts.pull_down is not None:
-            self._to_ground(at.pull_down, parts.pull_down)
-        self._wire((0.72, 0.0), (at.input_buffer, 0.0))
-        self._buffer(at.input_buffer, parts.input_buffer, self._stage.input_buffer.name)
-        self._wire((at.input_buffer + 1.5, 0.0), (at.series[0], 0.0))
+            self._to_ground(_PULL_DOWN, parts.pull_down)
+        self._wire((_IN + 0.12, 0.0), (_INPUT_BUFFER, 0.0))
+        self._buffer(_INPUT_BUFFER, parts.input_buffer, self._stage.input_buffer.name)
+        self._wire((_INPUT_BUFFER + 1.5, 0.0), (at.series[0], 0.0))
         self._series()
         self._wire((at.series[1], 0.0), (at.pot[0], 0.0))
         self._pot()
@@ -134,13 +138,13 @@ class _Drawing:
         """Lines from ``y`` up (or down, with ``down=True``), each centred at ``x``."""
         down = style.pop("down", False)
         for number, words in enumerate(lines if down else reversed(lines)):
-            step = (number + 0.5) * _LINE
+            step = (number + 0.5) * self._line
             self.labels.append(
                 {"x": x, "y": y - step if down else y + step, "s": words, "ha": ha, "va": "center",
                  "fontsize": _SIZE, "color": INK, **style}
             )  # fmt: skip
 
-    def _terminal(self, x: float, name: str, probe: str, *, after: bool) -> None:
+    def _terminal(self, x: float, name: str, probe: str) -> None:
         self._add(self._el.Dot(open=True, radius=0.12).at((x, 0.0)))
         self._label(x, 0.3, [name], fontweight="bold")
         self._label(x, -0.3, [probe], down=True, color=PENCIL)
@@ -161,7 +165,7 @@ class _Drawing:
         self._add(triangle.at((x, 0.0)).theta(0))
         words = {"custom": "op-amp", "ideal": "ideal buffer"}.get(kind, kind)
         words = words.replace("cmos", "CMOS").replace("jfet", "JFET")
-        lines = [part.reference, *wrapped(words, 3.0 * UNIT_MM, _SIZE, 3)]
+        lines = [part.reference, *wrapped(words, 3.0 * self._at.unit_mm, _SIZE, 3)]
         self._label(x + 0.7, 1.0, lines)
         supply = self._stage.supply
         low = f"−{-supply.negative_v:g} V" if supply.negative_v else "0 V"
@@ -196,7 +200,7 @@ class _Drawing:
         if not names:
             return "never"
         words = f"in {', '.join(names)}"
-        if width_mm(words, _SIZE) <= width * UNIT_MM:
+        if width_mm(words, _SIZE) <= width * self._at.unit_mm:
             return words
         numbers = [str(self._stage.range_names.index(name) + 1) for name in names]
         return f"in {', '.join(numbers)}"
@@ -211,7 +215,7 @@ class _Drawing:
         self._wire((middle, 1.0), (right - 0.4, 1.0))
         self._wire((right - 0.4, 1.0), (right - 0.4, 0.0))
         self._dot(right - 0.4)
-        taper = wrapped(self._stage.pot.taper.name, 3.6 * UNIT_MM, _SIZE, 2)
+        taper = wrapped(self._stage.pot.taper.name, 3.6 * self._at.unit_mm, _SIZE, 2)
         value = f"{part.value_text} {part.tolerance_text}"
         self._label(middle, 1.15, [f"{part.reference} time", value, *taper])
 
@@ -229,31 +233,41 @@ class _Drawing:
             else:
                 self._two_ends(self._el.Switch, (x, 0.0), (x, -2.2))
                 contacts.append(x)
-                self._label(x - 0.3, -1.85, [self._closed_in(names, 1.9)], ha="right")
+                if not self._is_crowded:
+                    self._label(x - 0.42, -2.0, [self._closed_in(names, 1.9)], ha="right")
             if bleed is not None:
                 self._bleed(x, bleed)
-            # Plus at the hold node: the first end is the upper one.
-            self._two_ends(self._el.Capacitor, (x, -2.2), (x, -3.8), polar=part.polarised)
+            self._two_ends(self._el.Capacitor, (x, -2.2), (x, -3.8))
+            if part.polarised:  # plus at the hold node
+                self._label(x - 0.55, -2.75, ["+"])
             self._add(self._el.Ground().at((x, -3.8)))
-            self._label(x, -4.75, self._capacitor_words(part), down=True)
+            self._label(x, -4.75, self._capacitor_words(part, names), down=True)
         if len(contacts) > 1:
-            self._wire((contacts[0] + 0.35, -1.1), (contacts[-1] + 0.35, -1.1), ls=":")
+            self._wire((contacts[0] + 0.35, -1.1), (contacts[-1] + 0.35, -1.1), ls="--")
 
-    def _capacitor_words(self, part: PartLine) -> list[str]:
-        width = (self._at.column_width - 0.2) * UNIT_MM
+    def _capacitor_words(self, part: PartLine, names: tuple[str, ...] | None) -> list[str]:
+        width = (self._at.column_width - 0.2) * self._at.unit_mm
         kind = wrapped(part.kind.removesuffix(", polarised"), width, _SIZE, 2)
         if any("…" in line for line in kind):
             kind = []  # the part list has it
-        return [f"{part.reference} {part.value_text}", part.tolerance_text, *kind]
+        words = [f"{part.reference} {part.value_text}", part.tolerance_text]
+        if self._is_crowded and names is not None:
+            words.append(self._closed_in(names, self._at.column_width - 0.2))
+        return [*words, *kind]
 
     def _bleed(self, x: float, part: PartLine) -> None:
         aside = x + 1.0
         self._dot(x, -2.2)
         self._wire((x, 0.0), (aside, 0.0))
         self._dot(aside)
-        self._two_ends(self._el.ResistorIEC, (aside, 0.0), (aside, -2.2))
+        # Filled, so that the dashed line passes behind it.
+        self._add(self._el.ResistorIEC(fill="white", zorder=4).at((aside, 0.0)).to((aside, -2.2)))
         self._wire((aside, -2.2), (x, -2.2))
-        self._label(aside + 0.35, -0.75, [part.reference, part.value_text], ha="left", down=True)
+        if self._is_crowded:
+            self._label(aside + 0.1, -2.3, [part.reference], ha="left", down=True)
+        else:
+            words = [part.reference, part.value_text]
+            self._label(aside + 0.4, -1.2, words, ha="left", down=True)
 
     def _output(self, x: float) -> None:
         parts = self._parts
@@ -263,10 +277,8 @@ class _Drawing:
         else:
             self._two_ends(self._el.ResistorIEC, (x, 0.0), (end, 0.0))
             part = parts.output_series
-            self._label(
-                (x + end) / 2, 0.5, [part.reference, part.value_text, part.tolerance_text]
-            )
+            self._label((x + end) / 2, 0.5, [part.reference, part.value_text, part.tolerance_text])
         if parts.load is not None:
             self._to_ground(end, parts.load, ls="--")
         self._wire((end, 0.0), (end + 1.6, 0.0))
-        self._terminal(end + 1.72, "OUT", "probe 2", after=True)
+        self._terminal(end + 1.72, "OUT", "probe 2")

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import warnings
+from collections.abc import Iterator
+from contextlib import contextmanager
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
@@ -14,6 +17,8 @@ MM_PER_POINT = MM_PER_INCH / 72.0
 PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/ASME Y14.1
 MARGIN_MM = 12.0
 INK, PENCIL, RULE, SHADE = "0.0", "0.35", "0.6", "0.9"
+_NOTE_MM = 7.5  # between ruled lines
+_ROUNDING = 1.02  # glyphs that are fitted to pixels run a little wider
 LEADING = 1.28  # line distance over letter size
 
 
@@ -93,11 +98,30 @@ class Page:
         box = Rectangle((left, top), width, height, facecolor=SHADE, edgecolor="none", zorder=0)
         self._paper.add_patch(box)
 
+    def notes(self, top: float) -> None:
+        """Ruled lines from ``top`` to the foot, if there is room for two or more."""
+        first = top + _NOTE_MM
+        if first + _NOTE_MM > self.bottom:
+            return
+        self.text(self.left, first - 1.6, "Notes", 7.0, color=PENCIL)
+        y, left = first, self.left + 9.0
+        while y <= self.bottom:
+            self.line(left, y, self.right, y, 0.4)
+            y, left = y + _NOTE_MM, self.left
+
     def heading(self, top: float, words: str) -> float:
         """A heading with a rule under it; returns where what follows may begin."""
         self.text(self.left, top + 2.2, words, 8.5, fontweight="bold")
         self.line(self.left, top + 4.6, self.right, top + 4.6, 0.9, INK)
         return top + 5.8
+
+
+@contextmanager
+def without_glyph_warnings() -> Iterator[None]:
+    """Lets a title hold signs that no font at hand has; they show as boxes."""
+    with warnings.catch_warnings():
+        warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
+        yield
 
 
 @cache
@@ -107,12 +131,14 @@ def width_mm(words: str, size: float, bold: bool = False) -> float:
     from matplotlib.textpath import text_to_path
 
     font = FontProperties(size=size, weight="bold" if bold else "normal")
-    found, _, _ = text_to_path.get_text_width_height_descent(words, font, ismath=False)
-    return float(found) * MM_PER_POINT
+    with without_glyph_warnings():
+        found, _, _ = text_to_path.get_text_width_height_descent(words, font, ismath=False)
+    return float(found) * MM_PER_POINT * _ROUNDING
 
 
 def fitted(words: str, width: float, size: float, bold: bool = False) -> str:
     """The text itself, or as much of its beginning as fits with an ellipsis."""
+    words = " ".join(words.split())
     if width_mm(words, size, bold) <= width:
         return words
     kept = words

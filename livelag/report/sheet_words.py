@@ -31,7 +31,12 @@ def volts_within(limits: Limits) -> str:
 
 def hertz(value: float) -> str:
     """A frequency of two digits, such as ``22 mHz``."""
-    return format_value(value, "Hz", digits=2)
+    return format_value(value, "Hz", digits=2).replace("u", "µ")
+
+
+def seconds(value: float) -> str:
+    """A time of three digits, such as ``1.47 s``."""
+    return "0" if value == 0.0 else format_value(value, "s").replace("u", "µ")
 
 
 def _within(limits: Limits, decimals: int, unit: str) -> str:
