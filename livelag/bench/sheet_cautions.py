@@ -21,8 +21,15 @@ def cautions(stage: GlideStage, parts: PartList) -> tuple[str, ...]:
         stage: the stage.
         parts: its parts, for their references.
     """
-    return (_supply(stage), *_polarity(stage, parts), _probe_ground(), _probing(stage),
-            _generator(stage), _people())  # fmt: skip
+    return (
+        _supply(stage),
+        *_polarity(stage, parts),
+        *_bias(stage, parts),
+        _probe_ground(),
+        _probing(stage),
+        _generator(stage),
+        _people(),
+    )
 
 
 def _supply(stage: GlideStage) -> str:
@@ -60,6 +67,19 @@ def _polarity(stage: GlideStage, parts: PartList) -> Iterator[str]:
         yield f"{names} must be a bipolar type: a polarised one of the same size can burst here."
     if not polarised and not either:
         yield "No capacitor here is polarised; decoupling capacitors at the op-amps may be."
+
+
+def _bias(stage: GlideStage, parts: PartList) -> Iterator[str]:
+    found = [
+        line.reference
+        for line, part in zip(parts.capacitors, stage.capacitors, strict=True)
+        if part.kind == "x7r"
+    ]
+    if found:
+        yield (
+            f"X7R loses capacitance under bias and heat, which these limits leave out: times with "
+            f"{' or '.join(found)} may read short."
+        )
 
 
 def _probe_ground() -> str:

@@ -156,10 +156,16 @@ def _capacitor(reference: str, part: Capacitor) -> PartLine:
     )  # fmt: skip
 
 
+def class_words(buffer: Buffer) -> str:
+    """The class of a buffer as people write it."""
+    words = {"custom": "op-amp", "ideal": "ideal buffer"}.get(buffer.name, buffer.name)
+    return words.replace("cmos", "CMOS").replace("jfet", "JFET")
+
+
 def _buffer(reference: str, place: str, buffer: Buffer) -> PartLine:
     if buffer.name == "ideal":
         return PartLine(reference, place, None, "", None, "ideal")
-    name = buffer.name.replace("cmos", "CMOS").replace("jfet", "JFET")
+    name = class_words(buffer)
     most = f"offset ≤ {format_value(buffer.offset_limit_v, 'V')}"
     bias = f"bias ≤ {format_value(buffer.bias_limit_a, 'A')}"
     return PartLine(reference, place, None, "", None, f"{name}: {most}, {bias}")

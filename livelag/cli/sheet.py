@@ -76,7 +76,7 @@ def run(args: argparse.Namespace) -> None:
     )
     out.print(_readings_table(sheet))
     out.print(
-        "As designed, and in brackets the least and most that a sound build may read. Volts one "
+        "As designed, and in brackets the least and most that a good build may read. Volts one "
         "time constant after the rising\nedge, and at the end of the high level."
     )
     for path in written.get("out", []):

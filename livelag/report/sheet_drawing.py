@@ -10,10 +10,11 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from livelag.bench.sheet_parts import PartLine, PartList, contact_ranges
+from livelag.bench.sheet_parts import PartLine, PartList, class_words, contact_ranges
 from livelag.report.sheet_page import INK, LEADING, MM_PER_POINT, PENCIL, Page, width_mm, wrapped
 
 if TYPE_CHECKING:
+    from livelag.circuit.parts import Buffer
     from livelag.circuit.stage import GlideStage
 
 _UNITS_MM = (5.0, 6.0)  # one unit is printed no smaller and no larger
@@ -103,7 +104,7 @@ class _Drawing:
         if parts.pull_down is not None:
             self._to_ground(_PULL_DOWN, parts.pull_down)
         self._wire((_IN + 0.12, 0.0), (_INPUT_BUFFER, 0.0))
-        self._buffer(_INPUT_BUFFER, parts.input_buffer, self._stage.input_buffer.name)
+        self._buffer(_INPUT_BUFFER, parts.input_buffer, self._stage.input_buffer)
         self._wire((_INPUT_BUFFER + 1.5, 0.0), (at.series[0], 0.0))
         self._series()
         self._wire((at.series[1], 0.0), (at.pot[0], 0.0))
@@ -111,7 +112,7 @@ class _Drawing:
         self._wire((at.pot[1], 0.0), (at.output_buffer, 0.0))
         self._label(at.pot[1] + 0.1, 0.4, ["hold node"], ha="left", style="italic")
         self._hold()
-        self._buffer(at.output_buffer, parts.output_buffer, self._stage.output_buffer.name)
+        self._buffer(at.output_buffer, parts.output_buffer, self._stage.output_buffer)
         self._output(at.output_buffer + 1.5)
 
     # Pieces of symbols
@@ -156,16 +157,14 @@ class _Drawing:
         lines = [part.reference, part.value_text, part.tolerance_text]
         self._label(x, -3.7, lines, down=True)
 
-    def _buffer(self, x: float, part: PartLine, kind: str) -> None:
+    def _buffer(self, x: float, part: PartLine, buffer: Buffer) -> None:
         from schemdraw.segments import Segment, SegmentText
 
         triangle = self._el.Element()
         triangle.segments.append(Segment([(0, 0.8), (0, -0.8), (1.5, 0), (0, 0.8)]))
         triangle.segments.append(SegmentText((0.5, 0.0), "1", fontsize=7.5))
         self._add(triangle.at((x, 0.0)).theta(0))
-        words = {"custom": "op-amp", "ideal": "ideal buffer"}.get(kind, kind)
-        words = words.replace("cmos", "CMOS").replace("jfet", "JFET")
-        lines = [part.reference, *wrapped(words, 3.0 * self._at.unit_mm, _SIZE, 3)]
+        lines = [part.reference, *wrapped(class_words(buffer), 3.0 * self._at.unit_mm, _SIZE, 3)]
         self._label(x + 0.7, 1.0, lines)
         supply = self._stage.supply
         low = f"−{-supply.negative_v:g} V" if supply.negative_v else "0 V"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -18,6 +19,7 @@ PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/AS
 MARGIN_MM = 12.0
 INK, PENCIL, RULE, SHADE = "0.0", "0.35", "0.6", "0.9"
 _NOTE_MM = 7.5  # between ruled lines
+_MOST_NOTES = 8
 _ROUNDING = 1.02  # glyphs that are fitted to pixels run a little wider
 LEADING = 1.28  # line distance over letter size
 
@@ -99,15 +101,16 @@ class Page:
         self._paper.add_patch(box)
 
     def notes(self, top: float) -> None:
-        """Ruled lines from ``top`` to the foot, if there is room for two or more."""
+        """Ruled lines from ``top`` towards the foot, if there is room for two or more."""
         first = top + _NOTE_MM
         if first + _NOTE_MM > self.bottom:
             return
         self.text(self.left, first - 1.6, "Notes", 7.0, color=PENCIL)
-        y, left = first, self.left + 9.0
-        while y <= self.bottom:
+        lines = min(int((self.bottom - top) / _NOTE_MM), _MOST_NOTES)
+        for number in range(lines):
+            left = self.left if number else self.left + 9.0
+            y = first + number * _NOTE_MM
             self.line(left, y, self.right, y, 0.4)
-            y, left = y + _NOTE_MM, self.left
 
     def heading(self, top: float, words: str) -> float:
         """A heading with a rule under it; returns where what follows may begin."""
@@ -138,7 +141,7 @@ def width_mm(words: str, size: float, bold: bool = False) -> float:
 
 def fitted(words: str, width: float, size: float, bold: bool = False) -> str:
     """The text itself, or as much of its beginning as fits with an ellipsis."""
-    words = " ".join(words.split())
+    words = " ".join(re.split(r"[^\S\u00a0]+", words.strip()))
     if width_mm(words, size, bold) <= width:
         return words
     kept = words
@@ -152,7 +155,8 @@ def wrapped(
 ) -> list[str]:
     """Text in lines no wider than a width; the last one ends in an ellipsis if some is left out."""
     lines: list[str] = []
-    left = words.split()
+    # A number stays with its unit: such spaces are made unbreakable.
+    left = re.sub(r"(?<=\d) (?=[A-Za-zµΩ%])", "\u00a0", " ".join(words.split())).split(" ")
     while left:
         if len(lines) == most_lines - 1:
             lines.append(fitted(" ".join(left), width, size, bold))

@@ -59,7 +59,7 @@ def _expectation_page(sheet: Sheet, paper: str) -> Page:
     span = page.right - page.left
     top = page.heading(MARGIN_MM, fitted(f"What to expect: {sheet.stage.title}", span, 8.5, True))
     words = (
-        "Nominal, and in brackets the least and most that a sound build may read: every part at "
+        "Nominal, and in brackets the least and most that a good build may read: every part at "
         "the end of its tolerance, offsets, bias current and leakage up to their data-sheet "
         "limits. Square: this frequency settles at this setting. Volts after 1 τ: one nominal "
         "time constant after the rising edge; settled volts: at the end of the high level."
@@ -70,7 +70,7 @@ def _expectation_page(sheet: Sheet, paper: str) -> Page:
     row_mm = min(max(room / rows, _LEAST_READ_MM), _MOST_READ_MM)
     top = draw_expectations(page, top, sheet, row_mm)
     words = (
-        "Solid: as designed. Hatched: where a sound build may be. Dashes: volts in. Dotted: one "
+        "Solid: as designed. Hatched: where a good build may be. Dashes: volts in. Dotted: one "
         "time constant."
     )
     top = page.paragraph(page.left, page.heading(top + 1.0, "Expected traces"), span, words, 6.6)
@@ -100,9 +100,11 @@ def _caption(sheet: Sheet) -> str:
         )
         for number, row in enumerate(sheet.stage.ranges, start=1)
     )
-    drawn = "Contacts are drawn open. " if len(sheet.stage.ranges) > 1 else ""
+    switch = f"Range switch: {ranges}. Contacts are drawn open. "
+    if len(sheet.stage.ranges) == 1:
+        switch = "One range, no range switch. "
     load = "The dashed resistor is the next input. " if sheet.parts.load else ""
-    return f"Range switch: {ranges}. {drawn}{load}Decoupling capacitors are not drawn."
+    return f"{switch}{load}Decoupling capacitors are not drawn."
 
 
 def _foot(page: Page, sheet: Sheet, number: int) -> None:

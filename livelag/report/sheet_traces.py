@@ -114,14 +114,25 @@ def _marks(axes: Axes, trace: Trace, sheet: Sheet, axes_mm: float) -> None:
 
 
 def _without_collisions(ticks: list[float], trace: Trace, axes_mm: float) -> list[str]:
-    """Labels of the ticks; one that would touch the one before it is left blank."""
-    start, end = float(trace.times_s[0]), float(trace.times_s[-1])
-    labels, taken = [], -_LEFT
-    for tick in ticks:
-        words = seconds(tick)
-        wide = width_mm(words, _TICK_SIZE)
-        place = (tick - start) / (end - start) * axes_mm - wide / (1 if tick == end else 2)
-        free = place > taken + 0.8
-        labels.append(words if free else "")
-        taken = place + wide if free else taken
+    """Labels of the ticks, or of every second one if they would touch one another."""
+    labels = [seconds(tick) for tick in ticks]
+    if _touching(ticks, labels, trace, axes_mm):
+        # One time constant keeps its label.
+        kept = 1 if trace.signal == "edge" else 0
+        labels = [
+            words if number % 2 == kept or number == 0 else ""
+            for number, words in enumerate(labels)
+        ]
     return labels
+
+
+def _touching(ticks: list[float], labels: list[str], trace: Trace, axes_mm: float) -> bool:
+    start, end = float(trace.times_s[0]), float(trace.times_s[-1])
+    taken = -_LEFT
+    for tick, words in zip(ticks, labels, strict=True):
+        wide = width_mm(words, _TICK_SIZE)
+        left = (tick - start) / (end - start) * axes_mm - wide / (1 if tick == end else 2)
+        if left < taken + 0.8:
+            return True
+        taken = left + wide
+    return False

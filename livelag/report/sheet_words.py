@@ -12,6 +12,7 @@ from livelag.units import format_value
 
 _PREFIXES = {-12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
 _VOLT_DECIMALS = 3
+_EXACT = 1e-12  # relative; between limits as close as this there is only rounding
 _SLACK = 1e-9  # of the last digit, so that a round value stays itself
 
 
@@ -44,7 +45,7 @@ def _within(limits: Limits, decimals: int, unit: str) -> str:
     low = math.floor(limits.low * step + _SLACK) / step
     high = math.ceil(limits.high * step - _SLACK) / step
     nominal = f"{limits.nominal:.{decimals}f}"
-    if f"{low:.{decimals}f}" == nominal == f"{high:.{decimals}f}":
+    if limits.high - limits.low <= _EXACT * abs(limits.nominal):
         return f"{nominal} {unit}"
     to = "–" if low >= 0.0 else " to "
     return f"{nominal} ({low:.{decimals}f}{to}{high:.{decimals}f}) {unit}"
