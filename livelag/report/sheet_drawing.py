@@ -70,6 +70,8 @@ def draw_stage(page: Page, top: float, stage: GlideStage, parts: PartList) -> fl
     width = page.right - page.left
     at = _places(parts, width)
     height = (_ABOVE + _depth(parts, at)) * at.unit_mm
+    if page.dry:
+        return top + height
     axes = page.axes_at(page.left, top, width, height)
     drawing = _Drawing(stage, parts, at)
     drawing.draw()

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 SUFFIXES = (".pdf", ".png", ".svg", ".html")
 PAPERS = tuple(PAPERS_MM)
 _DOTS_PER_INCH = 200
-_SETTINGS: Any = {
+SETTINGS: Any = {
     "svg.hashsalt": "livelag",
     "pdf.fonttype": 42,  # letters stay text that can be searched and copied
     "text.hinting": "none",  # letters keep their widths at any size
@@ -54,7 +54,7 @@ def write_sheet(sheet: Sheet, paper: str, places: Sequence[Path]) -> None:
 
     from livelag.report.sheet_pages import sheet_pages
 
-    with rc_context(_SETTINGS), without_glyph_warnings():
+    with rc_context(SETTINGS), without_glyph_warnings():
         pages = sheet_pages(sheet, paper)
         suffix = places[0].suffix.lower()
         if suffix == ".pdf":

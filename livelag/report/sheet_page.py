@@ -31,11 +31,13 @@ class Page:
         figure: to save.
         width_mm: of the paper.
         height_mm: of the paper.
+        dry: whether nothing is drawn, to learn where things would end.
     """
 
-    def __init__(self, paper: str) -> None:
+    def __init__(self, paper: str, *, dry: bool = False) -> None:
         from matplotlib.figure import Figure
 
+        self.dry = dry
         self.width_mm, self.height_mm = PAPERS_MM[paper]
         self.figure: Figure = Figure(
             figsize=(self.width_mm / MM_PER_INCH, self.height_mm / MM_PER_INCH), facecolor="white"
@@ -74,7 +76,9 @@ class Page:
     def text(self, x: float, y: float, words: str, size: float = 7.0, **style: Any) -> None:
         """One line of text whose middle is at ``y``, in points; styles as matplotlib has them."""
         style = {"va": "center", "ha": "left", "color": INK, **style}
-        self._paper.text(x, y, words, fontsize=size, parse_math=False, **style)
+        if not self.dry:
+            at = x / self.width_mm, 1.0 - y / self.height_mm
+            self.figure.text(*at, words, fontsize=size, parse_math=False, **style)
 
     def paragraph(
         self, x: float, top: float, width: float, words: str, size: float = 7.0,
@@ -91,10 +95,15 @@ class Page:
         self, x0: float, y0: float, x1: float, y1: float, weight: float = 0.5, colour: str = RULE
     ) -> None:
         """A straight rule, its weight in points."""
-        self._paper.plot([x0, x1], [y0, y1], color=colour, linewidth=weight, solid_capstyle="butt")
+        if not self.dry:
+            self._paper.plot(
+                [x0, x1], [y0, y1], color=colour, linewidth=weight, solid_capstyle="butt"
+            )
 
     def shade(self, left: float, top: float, width: float, height: float) -> None:
         """A light grey rectangle behind text."""
+        if self.dry:
+            return
         from matplotlib.patches import Rectangle
 
         box = Rectangle((left, top), width, height, facecolor=SHADE, edgecolor="none", zorder=0)
@@ -144,10 +153,14 @@ def fitted(words: str, width: float, size: float, bold: bool = False) -> str:
     words = " ".join(re.split(r"[^\S\u00a0]+", words.strip()))
     if width_mm(words, size, bold) <= width:
         return words
-    kept = words
-    while kept and width_mm(f"{kept}…", size, bold) > width:
-        kept = kept[:-1]
-    return f"{kept.rstrip()}…"
+    fits, fits_not = 0, len(words)
+    while fits_not - fits > 1:
+        middle = (fits + fits_not) // 2
+        if width_mm(f"{words[:middle].rstrip()}…", size, bold) <= width:
+            fits = middle
+        else:
+            fits_not = middle
+    return f"{words[:fits].rstrip()}…"
 
 
 def wrapped(
@@ -156,7 +169,8 @@ def wrapped(
     """Text in lines no wider than a width; the last one ends in an ellipsis if some is left out."""
     lines: list[str] = []
     # A number stays with its unit: such spaces are made unbreakable.
-    left = re.sub(r"(?<=\d) (?=[A-Za-zµΩ%])", "\u00a0", " ".join(words.split())).split(" ")
+    joined = re.sub(r"(?<=\d) (?=[A-Za-zµΩ%])", "\u00a0", " ".join(words.split()))
+    left = joined.split(" ") if joined else []
     while left:
         if len(lines) == most_lines - 1:
             lines.append(fitted(" ".join(left), width, size, bold))

@@ -25,16 +25,18 @@ def sheet_pages(sheet: Sheet, paper: str) -> tuple[Figure, Figure]:
         sheet: what they say.
         paper: a name of `livelag.report.sheet_page.PAPERS_MM`.
     """
-    tight, end, rows = _stage_page(sheet, paper, _LEAST_ROW_MM)
+    tight = Page(paper, dry=True)
+    end, rows = _draw_first(tight, sheet, _LEAST_ROW_MM)
     row_mm = min(_LEAST_ROW_MM + (tight.bottom - end) / rows, _MOST_ROW_MM)
-    first, end, _ = _stage_page(sheet, paper, row_mm)
+    first = Page(paper)
+    end, _ = _draw_first(first, sheet, row_mm)
     first.notes(end)
     return first.figure, _expectation_page(sheet, paper).figure
 
 
-def _stage_page(sheet: Sheet, paper: str, row_mm: float) -> tuple[Page, float, int]:
-    """The page with rows of a height, where it ends, and how many rows it has."""
-    page, stage = Page(paper), sheet.stage
+def _draw_first(page: Page, sheet: Sheet, row_mm: float) -> tuple[float, int]:
+    """The stage and what to set, in rows of a height; returns where it ends and how many rows."""
+    stage = sheet.stage
     span = page.right - page.left
     top = page.paragraph(
         page.left, MARGIN_MM, span, stage.title, 14.0, most_lines=2, fontweight="bold"
@@ -51,7 +53,7 @@ def _stage_page(sheet: Sheet, paper: str, row_mm: float) -> tuple[Page, float, i
         page.text(page.left + 0.4, top + 1.6, "⚠", 7.0)
         top = page.paragraph(page.left + 4.0, top, span - 4.0, sentence, 7.0)
     _foot(page, sheet, 1)
-    return page, top, parts + signals
+    return top, parts + signals
 
 
 def _expectation_page(sheet: Sheet, paper: str) -> Page:

@@ -207,7 +207,7 @@ def test_rails_without_room_are_refused_and_narrow_ones_are_used():
         bench_sheet(drift)
 
 
-@settings(deadline=None, max_examples=20)
+@settings(deadline=None, max_examples=10)
 @given(stages())
 def test_any_stage_has_a_sheet_or_a_reason(stage):
     try:
