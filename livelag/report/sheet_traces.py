@@ -72,15 +72,10 @@ def _title(trace: Trace, sheet: Sheet) -> str:
 
 
 def _draw(axes: Axes, trace: Trace) -> None:
-    from matplotlib import rc_context
-
-    # The hatch takes its weight when it is drawn, so it is set on the collection as well.
-    with rc_context({"hatch.linewidth": 0.35}):
-        band = axes.fill_between(
-            trace.times_s, trace.low_v, trace.high_v, facecolor="0.93", edgecolor=RULE,
-            linewidth=0.4, hatch="//////",
-        )  # fmt: skip
-    band.set_hatch_linewidth(0.35)
+    axes.fill_between(
+        trace.times_s, trace.low_v, trace.high_v, facecolor="0.93", edgecolor=RULE,
+        linewidth=0.4, hatch="//////",
+    )  # fmt: skip
     axes.plot(trace.times_s, trace.key_volts, color=PENCIL, linewidth=0.7, linestyle=(0, (4, 2)))
     axes.plot(trace.times_s, trace.nominal_v, color=INK, linewidth=1.1)
     axes.set_xlim(float(trace.times_s[0]), float(trace.times_s[-1]))
@@ -103,7 +98,7 @@ def _marks(axes: Axes, trace: Trace, sheet: Sheet, axes_mm: float) -> None:
     if trace.signal == "staircase":
         ticks = [span * count / len(at.stairs_v) for count in range(len(at.stairs_v) + 1)]
     axes.set_xticks(ticks, _without_collisions(ticks, trace, axes_mm))
-    if ticks[-1] == span:  # it would stick out of the panel
+    if _at_end(ticks[-1], trace):  # it would stick out of the panel
         axes.get_xticklabels()[-1].set_horizontalalignment("right")
     axes.tick_params(labelsize=_TICK_SIZE, length=1.6, width=0.4, pad=1.2, direction="out")
     axes.grid(color="0.8", linewidth=0.3)
@@ -131,8 +126,12 @@ def _touching(ticks: list[float], labels: list[str], trace: Trace, axes_mm: floa
     taken = -_LEFT
     for tick, words in zip(ticks, labels, strict=True):
         wide = width_mm(words, _TICK_SIZE)
-        left = (tick - start) / (end - start) * axes_mm - wide / (1 if tick == end else 2)
+        left = (tick - start) / (end - start) * axes_mm - wide / (1 if _at_end(tick, trace) else 2)
         if left < taken + 0.8:
             return True
         taken = left + wide
     return False
+
+
+def _at_end(tick: float, trace: Trace) -> bool:
+    return tick > float(trace.times_s[-1]) * (1.0 - 1e-9)
