@@ -42,10 +42,22 @@ class Page:
         self.figure: Figure = Figure(
             figsize=(self.width_mm / MM_PER_INCH, self.height_mm / MM_PER_INCH), facecolor="white"
         )
+        self._rules: list[tuple[list[tuple[float, float]], float, str]] = []
         self._paper = self.axes_at(0.0, 0.0, self.width_mm, self.height_mm)
         self._paper.set_axis_off()
         self._paper.set_xlim(0.0, self.width_mm)
         self._paper.set_ylim(self.height_mm, 0.0)
+
+    def finished(self) -> Figure:
+        """The figure, with its rules drawn at one go: there are hundreds."""
+        from matplotlib.collections import LineCollection
+
+        lines, weights, colours = zip(*self._rules, strict=True)
+        self._paper.add_collection(
+            LineCollection(list(lines), linewidths=weights, colors=colours, capstyle="butt"),
+            autolim=False,
+        )
+        return self.figure
 
     @property
     def left(self) -> float:
@@ -95,10 +107,7 @@ class Page:
         self, x0: float, y0: float, x1: float, y1: float, weight: float = 0.5, colour: str = RULE
     ) -> None:
         """A straight rule, its weight in points."""
-        if not self.dry:
-            self._paper.plot(
-                [x0, x1], [y0, y1], color=colour, linewidth=weight, solid_capstyle="butt"
-            )
+        self._rules.append(([(x0, y0), (x1, y1)], weight, colour))
 
     def shade(self, left: float, top: float, width: float, height: float) -> None:
         """A light grey rectangle behind text."""

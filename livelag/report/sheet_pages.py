@@ -31,7 +31,7 @@ def sheet_pages(sheet: Sheet, paper: str) -> tuple[Figure, Figure]:
     first = Page(paper)
     end, _ = _draw_first(first, sheet, row_mm)
     first.notes(end)
-    return first.figure, _expectation_page(sheet, paper).figure
+    return first.finished(), _expectation_page(sheet, paper).finished()
 
 
 def _draw_first(page: Page, sheet: Sheet, row_mm: float) -> tuple[float, int]:
@@ -63,8 +63,10 @@ def _expectation_page(sheet: Sheet, paper: str) -> Page:
     words = (
         "Nominal, and in brackets the least and most that a good build may read: every part at "
         "the end of its tolerance, offsets, bias current and leakage up to their data-sheet "
-        "limits. Square: this frequency settles at this setting. Volts after 1 τ: one nominal "
-        "time constant after the rising edge; settled volts: at the end of the high level."
+        "limits. Square: this frequency settles at this setting. Time constant: R times C; read it "
+        "as the time to 63.2 % of the step, which leakage shortens and absorption or a bleed "
+        "lengthens. Volts after 1 τ: one nominal time constant after the rising edge; settled "
+        "volts: at the end of the high level."
     )
     top = page.paragraph(page.left, top, span, words, 6.6) + 1.0
     rows = len(sheet.rows) + 2 * len(sheet.signals)

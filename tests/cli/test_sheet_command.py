@@ -4,7 +4,7 @@ import csv
 import json
 
 import pytest
-from sheet_stages import CROWDED
+from sheet_stages import CROWDED, SPARE
 
 from livelag.circuit.presets import preset_names, stage_to_toml
 
@@ -52,20 +52,15 @@ def test_tables_say_what_to_set_and_what_to_read(livelag):
 @pytest.mark.parametrize(
     ("out", "files"),
     [
-        ("s.pdf", ["s.pdf"]),
         ("s.html", ["s.html"]),
         ("s.svg", ["s-1.svg", "s-2.svg"]),
         ("s.png", ["s-1.png", "s-2.png"]),
     ],
 )
-def test_files_are_named_and_there(livelag, tmp_path, out, files):
-    answer = livelag("sheet", "one-range-log", "--out", out, "--paper", "Letter")
-    assert answer.status == 0
-    assert sorted(path.name for path in tmp_path.iterdir()) == files
-    for name in files:
-        assert f"sheet in {name}" in answer.out
+def test_files_are_told_and_there(livelag, tmp_path, out, files):
     told = json.loads(livelag("sheet", "one-range-log", "--out", out, "--json").out)
     assert (told["out"], told["paper"]) == (files, "a4")
+    assert sorted(path.name for path in tmp_path.iterdir()) == files
 
 
 def test_csv_has_a_row_for_every_position(livelag, tmp_path):
@@ -82,11 +77,12 @@ def test_csv_has_a_row_for_every_position(livelag, tmp_path):
         assert float(row["gain_low"]) == pytest.approx(position["gain"]["low"], rel=1e-11)
 
 
-def test_a_preset_of_ones_own(livelag, tmp_path):
-    (tmp_path / "mine.toml").write_text(stage_to_toml(CROWDED), encoding="utf-8")
-    answer = livelag("sheet", "mine.toml", "--out", "mine.pdf")
+def test_a_preset_of_ones_own_on_a_paper_of_choice(livelag, tmp_path):
+    (tmp_path / "mine.toml").write_text(stage_to_toml(SPARE), encoding="utf-8")
+    answer = livelag("sheet", "mine.toml", "--out", "mine.pdf", "--paper", "Letter")
     assert answer.status == 0
-    assert (tmp_path / "mine.pdf").read_bytes().startswith(b"%PDF")
+    assert "sheet in mine.pdf" in answer.out
+    assert b"/MediaBox [ 0 0 612 792 ]" in (tmp_path / "mine.pdf").read_bytes()
 
 
 @pytest.mark.parametrize(
