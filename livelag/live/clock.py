@@ -56,7 +56,7 @@ class DelayLockedClock:
         self._period = self._nominal  # seconds per frame, as the loop sees it
         self._frames = 0
         self._time = math.nan  # filtered time of frame `_frames`
-        self._age = 0
+        self._age = self._slope_age = 0
         self._off_count = 0
         self._off_sum = 0.0
 
@@ -93,10 +93,12 @@ class DelayLockedClock:
         else:
             self._off_count, self._off_sum = 0, 0.0
         self._age += 1
-        omega = max(self._two_pi_b * block_s, 2.8 / self._age)  # omega = 2 pi B T
+        self._slope_age += 1
+        omega = self._omega(block_s, self._age)
         self._time = predicted + math.sqrt(2.0) * omega * error  # b = sqrt(2) omega
         self._frames = frames
         if passed > 0:
+            omega = self._omega(block_s, self._slope_age)
             period = self._period + omega * omega * error / passed  # c = omega^2
             low, high = (1 - _MAX_DRIFT) * self._nominal, (1 + _MAX_DRIFT) * self._nominal
             self._period = min(max(period, low), high)
@@ -117,10 +119,15 @@ class DelayLockedClock:
             raise RuntimeError("the clock has not seen a callback yet")
         return self._frames + (stamp_s - self._time) / self._period
 
+    def _omega(self, block_s: float, age: int) -> float:
+        """Of the loop, omega = 2 pi B T, and more while the loop is young."""
+        return max(self._two_pi_b * block_s, 2.8 / age)
+
     def _lock(self, frames: int, time_s: float) -> None:
-        """Start the line anew at a point, keeping the slope that was learnt."""
+        """Start the line anew at a point; a dropout has not changed the slope that was learnt."""
         if self._time == self._time:
             self.relocks += 1
         self._frames, self._time = frames, time_s
         self._age = _START_AGE
+        self._slope_age = max(self._slope_age, _START_AGE)
         self._off_count, self._off_sum = 0, 0.0

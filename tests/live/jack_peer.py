@@ -15,11 +15,15 @@ PLAN keys, all but `name` optional:
                 that in every block, over and over
     frames      length of the plan (default: last event, plus a block)
     send_to     input ports, by name or regular expression, to connect `name:out` to
+    sound       float32 .npy of shape (frames,), played on `name:sound` from the start, then silence
+    sound_to    audio input ports, by name or regular expression, to connect `name:sound` to
     record_from audio output ports, likewise, one recorded channel for each match
     out         where to write the recording: float32, shape (frames, channels)
 
 "done" holds `start_frame` and `start_s`, `xruns`, `lost_blocks` (plan frames the server skipped;
-the recording has zeros there) and `events`: for each [frame, ideal seconds, handed-over seconds].
+the recording has zeros there), `stalls` (plan frames at which the server was more than STALL_S
+late or had skipped; its own clock needs a while to settle after one) and `events`: for each
+[frame, ideal seconds, handed-over seconds].
 The ideal is the frame's time on JACK's own clock, CLOCK_MONOTONIC_RAW smoothed by a loop, and
 good for differences only. Handed over is when this client was done with the cycle, which sets off
 the clients that listen to it, on time.perf_counter's clock, and good for any process here.
@@ -34,6 +38,8 @@ from pathlib import Path
 
 import jack
 import numpy as np
+
+STALL_S = 0.001
 
 
 class CycleTimes:
@@ -69,6 +75,11 @@ class Peer:
         last = self.events[-1][0] if self.events else 0
         self.frames = int(plan.get("frames", last + self.block))
         self.midi = self.client.midi_outports.register("out")
+        self.sound = np.zeros(0, np.float32)
+        self.speaker = None
+        if "sound" in plan:
+            self.sound = np.load(plan["sound"])
+            self.speaker = self.client.outports.register("sound")
         self.inputs = []
         self.recording = np.zeros((self.frames, 0), np.float32)
         self.start = None
@@ -78,6 +89,7 @@ class Peer:
         self.next_event = self.burst_at = 0
         self.sent = []
         self.xruns = self.lost_blocks = 0
+        self.stalls = []
         self.error = None
         self.gone = False
         self.client.set_process_callback(self.process)
@@ -95,6 +107,9 @@ class Peer:
         for pattern in self.plan.get("send_to", []):
             for port in self.wait_for(pattern, is_midi=True, is_input=True):
                 self.client.connect(self.midi, port)
+        for pattern in self.plan.get("sound_to", []):
+            for port in self.wait_for(pattern, is_audio=True, is_input=True):
+                self.client.connect(self.speaker, port)
         for pattern in self.plan.get("record_from", []):
             for port in self.wait_for(pattern, is_audio=True, is_output=True):
                 self.inputs.append(self.client.inports.register(f"in_{len(self.inputs) + 1}"))
@@ -111,6 +126,8 @@ class Peer:
     def process(self, frames):
         try:
             self.midi.clear_buffer()
+            if self.speaker is not None:
+                self.speaker.get_array()[:] = 0.0
             if self.armed and not self.finished:
                 before = len(self.sent)
                 self.play(frames)
@@ -124,9 +141,12 @@ class Peer:
         frame, now_s = self.cycle_times()
         if self.start is None:
             self.start, self.start_s, self.expected = frame, now_s, frame
-        self.lost_blocks += (frame - self.expected) // frames
+        lost_blocks = (frame - self.expected) // frames
+        self.lost_blocks += lost_blocks
         self.expected = frame + frames
         offset = frame - self.start
+        if lost_blocks or time.clock_gettime(time.CLOCK_MONOTONIC_RAW) - now_s > STALL_S:
+            self.stalls.append(offset)
         if offset >= self.frames:
             self.finished = True
             return
@@ -146,6 +166,9 @@ class Peer:
             self.sent.append([offset + within, now_s + within / self.client.samplerate])
             self.next_event += 1
         here = min(frames, self.frames - offset)
+        sound = self.sound[offset : offset + frames]
+        if len(sound):
+            self.speaker.get_array()[: len(sound)] = sound
         for channel, port in enumerate(self.inputs):
             self.recording[offset : offset + here, channel] = port.get_array()[:here]
 
@@ -169,6 +192,7 @@ class Peer:
                     "burst_events": self.burst_at,
                     "xruns": self.xruns,
                     "lost_blocks": self.lost_blocks,
+                    "stalls": self.stalls,
                 }
             )
             sys.stdin.readline()

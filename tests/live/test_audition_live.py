@@ -11,6 +11,7 @@ import time
 
 import numpy as np
 import pytest
+import scipy.signal
 import soundfile
 from audition_process import Audition
 
@@ -25,6 +26,9 @@ FULL_SCALE_V = 10.0
 ON, OFF, CONTROL = 0x90, 0x80, 0xB0
 PORTS = ["PortAudio:out_0", "PortAudio:out_1"]
 WARM_UP = 16  # a port's first messages may come late
+MOST_RUNS = 6
+LEAST_KEYS = 15
+SETTLES_S = 0.5  # the server's clock, after a stall
 
 
 @pytest.fixture
@@ -85,15 +89,21 @@ def score(block):
     return events, keys, glide_at, flip_at
 
 
-def added_jitter_s(delays, sent, keys):
+def added_jitter_s(delays, report, keys):
     """What livelag adds: change of delay from key to key, less the change in the driver's lateness.
 
     The driver hands a block's messages over when the server gets round to it, which the peer
-    notes for every message.
+    notes for every message. The server's own clock tells when it should have; after a stall that
+    clock has to settle, so keys soon after one measure nothing and are left out.
     """
-    late = {frame: handed_s - ideal_s for frame, ideal_s, handed_s in sent}
+    late = {frame: handed_s - ideal_s for frame, ideal_s, handed_s in report["events"]}
+    stalls = np.array(report["stalls"])
+    settled = [
+        not np.any((stalls > f - RATE // 50) & (stalls < f + SETTLES_S * RATE)) for f in keys
+    ]
     own = delays / RATE - np.array([late.get(frame, np.nan) for frame in keys])
-    return np.abs(np.diff(own))
+    changes = np.abs(np.diff(np.where(settled, own, np.nan)))
+    return changes[np.isfinite(changes)]
 
 
 @pytest.mark.parametrize("block", [64, 128, 512])
@@ -101,16 +111,23 @@ def test_keys_sound_on_time_in_tune_with_the_stages_glide(
     jack_server, jack_peer, audition, tmp_path, block
 ):
     server = jack_server(block=block)
-    for tries_left in (2, 1, 0):
+    jitter_s = np.empty(0)
+    for runs_left in reversed(range(MOST_RUNS)):  # a busy machine can spoil a run, not every one
         try:
-            check_one_run(server, jack_peer, audition, tmp_path, block)
-            return
+            more_s = check_one_run(server, jack_peer, audition, tmp_path, block)
         except AssertionError:
-            if not tries_left:  # a busy machine can spoil a run, but not every run
+            if not runs_left:
                 raise
+        else:
+            jitter_s = np.append(jitter_s, more_s)
+            if len(jitter_s) >= LEAST_KEYS:
+                break
+    assert len(jitter_s) >= LEAST_KEYS, "the server stalled too often to measure anything"
+    assert np.mean(jitter_s < 1e-4) >= 0.85, jitter_s
 
 
 def check_one_run(server, jack_peer, audition, tmp_path, block):
+    """Plays, listens, checks; returns the jitter of keys that the server's stalls left alone."""
     playing = audition(
         server, "ideal", "--rotation", 0, "--waveform", "sine", "--block", block,
         "--cv-out", 2, "--full-scale-volts", FULL_SCALE_V,
@@ -136,8 +153,6 @@ def check_one_run(server, jack_peer, audition, tmp_path, block):
     late = int(np.median(delays))
     assert block <= late <= answer["latency_s"] * RATE + 2 * block
     assert np.mean(np.abs(delays - late) < block) > 0.8
-    jitter_s = added_jitter_s(delays, report["events"], measured)
-    assert np.nanmean(jitter_s < 1e-4) >= 0.85, jitter_s
 
     # The pitch of every note, from its second half.
     for frame, note in keys[WARM_UP:]:
@@ -157,6 +172,53 @@ def check_one_run(server, jack_peer, audition, tmp_path, block):
     after = volts[flip_at : flip_at + 6 * block + 1000]
     expected = 2.0 * 330e-9 / (330e-9 + 4.7e-6)
     assert after[after > 0.0].min() == pytest.approx(expected, abs=0.001)
+    return added_jitter_s(delays, report, measured)
+
+
+def test_volts_from_outside_glide_as_ramps_between_samples(
+    jack_server, jack_peer, audition, tmp_path
+):
+    """What comes out is what scipy.signal.lsim says of 1/(1 + s tau) with ramps between samples."""
+    server = jack_server(block=512)
+    corners = [
+        (0.0, 0.0),
+        (0.3, 0.0),
+        (0.5, 4.0),
+        (0.7, 4.0),
+        (0.70002, -2.0),
+        (1.2, 1.0),
+        (2.0, 1.0),
+    ]
+    times_s = np.arange(2 * RATE) / RATE
+    volts_in = np.interp(times_s, *zip(*corners, strict=True))
+    np.save(tmp_path / "in.npy", (volts_in / FULL_SCALE_V).astype(np.float32))
+    tau = load_stage("ideal").time_constant_s(Setting(0, 0.5))
+    system = scipy.signal.lti([1.0], [tau, 1.0])
+    _, expected, _ = scipy.signal.lsim(system, volts_in, times_s, interp=True)
+    out = tmp_path / "heard.npy"
+    for runs_left in reversed(range(MOST_RUNS)):
+        playing = audition(
+            server, "ideal", "--rotation", 0.5, "--block", 512, "--cv-in", 1, "--cv-out", 2,
+            "--full-scale-volts", FULL_SCALE_V, midi=False,
+        )  # fmt: skip
+        peer = jack_peer(
+            server, name=f"source {time.monotonic_ns()}", sound=str(tmp_path / "in.npy"),
+            sound_to=["PortAudio:in_0"], record_from=["PortAudio:out_1"], out=str(out),
+            frames=2 * RATE,
+        )  # fmt: skip
+        time.sleep(0.5)  # the mute at the start
+        peer.go()
+        report = peer.done()
+        playing.leave()
+        peer.quit()
+        if not report["lost_blocks"]:
+            break
+        assert runs_left, "the server lost blocks in every run"
+    glide_v = np.load(out)[:, 0].astype(float) * FULL_SCALE_V
+    lags = range(0, 8 * 512, 256)  # whole blocks; a half to see that the others do not fit
+    errors = [np.abs(glide_v[lag:] - expected[: len(expected) - lag]).max() for lag in lags]
+    assert min(errors) < 1e-5
+    assert sorted(errors)[1] > 0.01
 
 
 def test_a_killed_keyboard_leaves_no_hanging_note(jack_server, jack_peer, audition, tmp_path):

@@ -87,6 +87,19 @@ def test_a_dropout_is_noticed_and_forgotten(block, blocks_lost):
     assert np.abs(simulation.run(2)).max() < 0.0001
 
 
+@pytest.mark.parametrize("block", [64, 128, 512])
+def test_a_dropout_leaves_the_rate_that_was_learnt(block):
+    simulation = Simulation(block, ppm=50)
+    simulation.run(20)
+    simulation.skipped_s += 4 * block / RATE
+    rates = []
+    for _ in range(20):
+        simulation.run(0.05)
+        rates.append(simulation.clock.rate_hz)
+    assert simulation.clock.relocks == 1
+    assert np.abs(np.array(rates) / simulation.true_rate - 1).max() < 3e-4
+
+
 def test_a_single_late_callback_moves_nothing():
     simulation = Simulation(128, noise_s=0.0)
     simulation.run(5)

@@ -6,7 +6,7 @@ import sys
 import pytest
 from audition_process import Audition
 
-SECONDS = 8
+SECONDS = 6
 MORE_THAN_WITHOUT = 2
 
 
