@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import contextlib
 import secrets
+import shutil
+from collections.abc import Callable, Iterable
+from functools import partial
 from pathlib import Path
 from types import TracebackType
 
@@ -74,6 +77,86 @@ class WholeFiles:
         """The file that a failure was about: the one it names, or else the first."""
         named = [path for temporary, path in self._pending if str(temporary) == error.filename]
         return (named or [self._pending[0][1]])[0]
+
+
+class WholeFolder:
+    """A folder into which new files come together, or not at all.
+
+    Use as a context manager and write to the folder that it gives, which lies hidden beside the
+    files' place until a normal exit moves them over, replacing what has their names. On any
+    exception, an interrupt included, the place is as it was. Files of other names stay.
+
+    Args:
+        path: the folder, made if it is not there; its own folder must be.
+        outdated: names of files in it that go when the new ones come.
+    """
+
+    def __init__(self, path: Path, outdated: Iterable[str] = ()) -> None:
+        self._path = path
+        self._outdated = frozenset(outdated)
+        self._work = path
+
+    def __enter__(self) -> Path:
+        path = self._path
+        try:
+            if path.exists() and not path.is_dir():
+                raise FileError(f"{path}: is a file; name a folder")
+            if not path.parent.is_dir():
+                raise FileError(
+                    f"{path}: folder {str(path.parent)!r} does not exist; make it first"
+                )
+            # On the same disk as the place, so that moving over is quick and cannot run out.
+            beside = path if path.is_dir() else path.parent
+            self._work = beside / f".livelag-{secrets.token_hex(6)}.part"
+            self._work.mkdir()
+        except OSError as error:
+            if isinstance(error, FileError):
+                raise
+            raise cannot_write(path, error) from error
+        return self._work
+
+    def __exit__(
+        self,
+        kind: type[BaseException] | None,
+        error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:
+        try:
+            if kind is None:
+                self._move_over()
+        except OSError as failure:
+            error = failure
+        finally:
+            shutil.rmtree(self._work, ignore_errors=True)
+        if isinstance(error, FileError):  # it may name a file in the folder that nobody asked for
+            raise FileError(str(error).replace(str(self._work), str(self._path))) from error
+        if isinstance(error, OSError):
+            raise cannot_write(self._path, error) from error
+
+    def _move_over(self) -> None:
+        new = sorted(entry.name for entry in self._work.iterdir())
+        older = self._work / "older"
+        older.mkdir()
+        undo: list[Callable[[], object]] = []
+        try:
+            if not self._path.exists():
+                self._path.mkdir()
+                undo.append(self._path.rmdir)
+            for name in sorted(self._outdated.union(new)):
+                target = self._path / name
+                if target.is_dir():
+                    raise FileError(f"{target}: is a folder; it is in the way of a file")
+                if target.exists():
+                    target.replace(older / name)
+                    undo.append(partial((older / name).replace, target))
+            for name in new:
+                (self._work / name).replace(self._path / name)
+                undo.append((self._path / name).unlink)
+        except BaseException:
+            for step in reversed(undo):
+                with contextlib.suppress(OSError):
+                    step()
+            raise
 
 
 def cannot_write(path: Path, error: OSError) -> FileError:

@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 
 from livelag.errors import FileError
-from livelag.files import WholeFiles, cannot_write
+from livelag.files import WholeFiles, WholeFolder, cannot_write
 
 
 def test_files_appear_together_at_the_end(tmp_path):
@@ -90,6 +90,105 @@ def test_the_second_place_may_be_the_wrong_one(tmp_path):
         files.temporary(tmp_path / "a.wav")
         files.temporary(tmp_path / "none" / "b.csv")
     assert not any(tmp_path.iterdir())
+
+
+# --- folders ----------------------------------------------------------------------------------
+
+
+def held(folder):
+    return {path.name: path.read_text() for path in folder.iterdir()}
+
+
+def test_a_new_folder_appears_with_all_its_files(tmp_path):
+    with WholeFolder(tmp_path / "set") as work:
+        (work / "a").write_text("new")
+        (work / "b").write_text("new")
+        assert not (tmp_path / "set").exists()
+    assert held(tmp_path / "set") == {"a": "new", "b": "new"}
+    (tmp_path / "plain").mkdir()
+    modes = {stat.S_IMODE(path.stat().st_mode) for path in tmp_path.iterdir()}
+    assert len(modes) == 1
+    assert len(list(tmp_path.iterdir())) == 2
+
+
+def older_folder(tmp_path):
+    folder = tmp_path / "set"
+    folder.mkdir()
+    for name in ("a", "gone", "mine"):
+        (folder / name).write_text(f"older {name}")
+    return folder
+
+
+def test_files_of_an_older_set_are_replaced_or_go_and_others_stay(tmp_path):
+    folder = older_folder(tmp_path)
+    with WholeFolder(folder, outdated=("gone", "never there")) as work:
+        (work / "a").write_text("new")
+        (work / "b").write_text("new")
+    assert held(folder) == {"a": "new", "b": "new", "mine": "older mine"}
+
+
+@pytest.mark.parametrize("kind", [ValueError, KeyboardInterrupt, SystemExit, FileError])
+@pytest.mark.parametrize("there", [True, False])
+def test_no_exception_changes_a_folder(tmp_path, kind, there):
+    folder = older_folder(tmp_path) if there else tmp_path / "set"
+    before = held(folder) if there else None
+    with pytest.raises(kind, match="stop"), WholeFolder(folder, outdated=("gone",)) as work:  # noqa: PT012
+        (work / "a").write_text("new")
+        raise kind("stop")
+    assert (held(folder) if there else None) == before
+    assert [path.name for path in tmp_path.iterdir()] == (["set"] if there else [])
+
+
+@pytest.mark.parametrize("number", range(1, 6))
+@pytest.mark.parametrize("kind", [OSError, KeyboardInterrupt])
+def test_a_move_that_fails_is_taken_back(tmp_path, monkeypatch, number, kind):
+    folder = older_folder(tmp_path)
+    before = held(folder)
+    replace = Path.replace
+    calls = []
+
+    def fail(self, target):
+        calls.append(target)
+        if len(calls) == number:
+            raise kind("stop")
+        return replace(self, target)
+
+    with pytest.raises((FileError, KeyboardInterrupt)), WholeFolder(folder, ("gone",)) as work:  # noqa: PT012
+        for name in ("a", "b", "c"):
+            (work / name).write_text("new")
+        monkeypatch.setattr(Path, "replace", fail)
+    assert len(calls) >= number
+    assert held(folder) == before
+    assert [path.name for path in tmp_path.iterdir()] == ["set"]
+
+
+def test_a_folder_in_the_way_of_a_file_stays(tmp_path):
+    folder = older_folder(tmp_path)
+    (folder / "b").mkdir()
+    (folder / "b" / "precious").write_text("mine")
+    with pytest.raises(FileError, match="b: is a folder"), WholeFolder(folder) as work:  # noqa: PT012
+        for name in ("a", "b"):
+            (work / name).write_text("new")
+    assert (folder / "b" / "precious").read_text() == "mine"
+    assert (folder / "a").read_text() == "older a"
+
+
+@pytest.mark.parametrize(
+    ("name", "message"),
+    [
+        ("none/set", "does not exist; make it first"),
+        ("file/set", "does not exist; make it first"),
+        ("file", "is a file; name a folder"),
+        ("n" * 300, "cannot be written: File name too long"),
+    ],
+)
+def test_places_that_cannot_hold_a_folder(tmp_path, name, message):
+    (tmp_path / "file").touch()
+    with pytest.raises(FileError) as caught, WholeFolder(tmp_path / name):
+        pass
+    assert str(caught.value).startswith(f"{tmp_path / name}: ")
+    assert message in str(caught.value)
+    assert [path.name for path in tmp_path.iterdir()] == ["file"]
 
 
 def test_cannot_write_says_why():

@@ -55,7 +55,7 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
     sound = parser.add_argument_group("sound")
     add_sound_options(sound, LEVEL_DBFS)
     sound.add_argument("--rate", type=int, default=48000, metavar="HZ", help="default 48000")
-    sound.add_argument("--depth", default="24", metavar="BITS", help="16, 24 (default) or float")
+    sound.add_argument("--depth", metavar="BITS", help="16, 24 or float; default 24, for a page 16")
     sound.add_argument(
         "--stereo", action="store_true", help="glide volts as a DC second channel beside the sound"
     )
@@ -73,6 +73,11 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
     many = parser.add_argument_group("a numbered set in one call")
     many.add_argument("--rotations", metavar="0,0.5,1", help="render each of these rotations")
     many.add_argument("--ranges", metavar="all", help="render each of these ranges, or all")
+    many.add_argument(
+        "--page", metavar="DIR",
+        help="a folder to send: sounds and a page that plays them beside their pitch curves; "
+        "default every range at 0, 0.5 and 1",
+    )  # fmt: skip
     parser.set_defaults(run=run)
 
 
@@ -82,6 +87,8 @@ def run(args: argparse.Namespace) -> None:
     from livelag.circuit.presets import load_stage
     from livelag.cli.render_job import RenderJob
 
+    if args.depth is None:
+        args.depth = "24" if args.page is None else "16"
     job = RenderJob.from_arguments(args, load_stage(args.preset))
     _render(args, job)
     # Said last, so that a rendering that fails says one line only.
@@ -90,6 +97,11 @@ def run(args: argparse.Namespace) -> None:
 
 
 def _render(args: argparse.Namespace, job: RenderJob) -> None:
+    if args.page is not None:
+        from livelag.cli.render_page import render_page
+
+        render_page(args, job)
+        return
     if args.rotations is not None or args.ranges is not None:
         from livelag.cli.render_set import render_set
 
@@ -125,6 +137,8 @@ def _refuse_contradictions(args: argparse.Namespace) -> None:
         refuse(args, "--rotation and --rotations exclude one another")
     if args.ranges is not None and args.range is not None:
         refuse(args, "--range and --ranges exclude one another")
+    if args.page is not None:
+        _refuse_with_page(args)
     if args.rotations is not None or args.ranges is not None:
         for option in ("cv", "picture"):
             if getattr(args, option) is not None:
@@ -136,6 +150,22 @@ def _refuse_contradictions(args: argparse.Namespace) -> None:
             value = getattr(args, option)
             if value is not None and value is not False:
                 refuse(args, f"--{option.replace('_', '-')} changes nothing with --bypass")
+
+
+def _refuse_with_page(args: argparse.Namespace) -> None:
+    for option, why in (
+        ("out", "--page names the folder itself"),
+        ("cv", "a page draws its curves itself"),
+        ("picture", "a page draws its curves itself"),
+    ):
+        if getattr(args, option) is not None:
+            refuse(args, f"--{option} and --page exclude one another: {why}")
+    if args.stereo:
+        refuse(args, "--stereo would put DC on the loudspeaker of whoever opens the page")
+    if args.bypass:
+        refuse(args, "--bypass makes every sound of a page the same")
+    if args.depth == "float":
+        refuse(args, "--depth float does not fit a page, whose sounds are FLAC: 16 or 24")
 
 
 def show_rendered(job: RenderJob, answer: dict[str, Any]) -> None:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import os
+from collections.abc import Sequence
 from contextlib import ExitStack
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -143,9 +144,12 @@ class RenderJob:
         cv: Path | None = None,
         cv_rate: float = 1000.0,
         picture: Path | None = None,
+        more_sinks: Sequence[Sink] = (),
         show_progress: bool = False,
     ) -> dict[str, Any]:
         """Render to files, all of them whole or none, and return the answer of the command.
+
+        ``more_sinks`` are given sound and volts too.
 
         Raises:
             InputError: if a file cannot hold the rendering, or a rate is out of bounds.
@@ -171,7 +175,7 @@ class RenderJob:
             wave = open_files.enter_context(
                 SoundFileOut(files.temporary(out), self.rate_hz, channels, self.depth)
             )
-            sinks: list[Sink] = [_SoundSink(wave, self.full_scale_v)]
+            sinks: list[Sink] = [_SoundSink(wave, self.full_scale_v), *more_sinks]
             if cv is not None:
                 from livelag.report.curve import CurveCsv
 

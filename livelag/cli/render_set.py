@@ -4,33 +4,25 @@ from __future__ import annotations
 
 import argparse
 import csv
-import multiprocessing
-import shutil
-import signal
-import tempfile
-from collections.abc import Iterator
-from concurrent.futures import ProcessPoolExecutor
-from concurrent.futures.process import BrokenProcessPool
-from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
 from livelag.cli.common import console, new_table, seconds, show_json, warn
+from livelag.cli.parallel import in_parallel
 from livelag.cli.render_job import RenderJob
-from livelag.errors import FileError, InputError, LivelagError
-from livelag.files import cannot_write
+from livelag.errors import InputError
+from livelag.files import WholeFolder
 
 DEFAULT_FOLDER = "livelag-set"
 INDEX_NAME = "index.csv"
+LONGEST_NAME = 40  # letters of a range's name in a file name
 INDEX_COLUMNS = ("number", "file", "range", "rotation", "time_constant_s", "seconds", "peak_dbfs")
 
 
 def render_set(args: argparse.Namespace, job: RenderJob) -> None:
     """Render every range asked for at every rotation asked for, whole or not at all."""
     folder = Path(DEFAULT_FOLDER if args.out is None else args.out)
-    settings = [(i, r) for i in _range_indices(args, job) for r in _rotations(args, job)]
-    jobs = [job.at(index, rotation) for index, rotation in settings]
-    answers = _render_all(jobs, folder)
+    answers = _render_all(settings_asked(args, job), folder)
     if args.json:
         show_json({"out": str(folder), "index": str(folder / INDEX_NAME), "renders": answers})
         return
@@ -42,11 +34,11 @@ def render_set(args: argparse.Namespace, job: RenderJob) -> None:
         )  # fmt: skip
     console().print(table)
     console().print(f"Written to {folder}: {INDEX_NAME}, sound files: {len(answers)}")
-    for sentence in _remarks(job, answers):
+    for sentence in remarks(job, answers):
         warn(sentence)
 
 
-def _remarks(job: RenderJob, answers: list[dict[str, Any]]) -> list[str]:
+def remarks(job: RenderJob, answers: list[dict[str, Any]]) -> list[str]:
     """What went on in every rendering, said once; what in some only, with their files."""
     files: dict[str, list[str]] = {}
     for row in answers:
@@ -56,6 +48,17 @@ def _remarks(job: RenderJob, answers: list[dict[str, Any]]) -> list[str]:
         sentence if len(names) == len(answers) else f"{', '.join(names)}: {sentence}"
         for sentence, names in files.items()
     ]
+
+
+def settings_asked(args: argparse.Namespace, job: RenderJob) -> list[RenderJob]:
+    """The job at every range asked for, at every rotation asked for.
+
+    Raises:
+        InputError: if a rotation is not a number from 0 to 1.
+        UnknownNameError: if there is no such range.
+    """
+    rotations = _rotations(args, job)
+    return [job.at(i, rotation) for i in _range_indices(args, job) for rotation in rotations]
 
 
 def _rotations(args: argparse.Namespace, job: RenderJob) -> list[float]:
@@ -78,86 +81,25 @@ def _range_indices(args: argparse.Namespace, job: RenderJob) -> list[int]:
 
 
 def _render_all(jobs: list[RenderJob], folder: Path) -> list[dict[str, Any]]:
-    """Render into a folder beside the one asked for, and move the files over when all are done."""
-    if folder.exists() and not folder.is_dir():
-        raise FileError(f"{folder}: is a file; a set of renderings needs a folder")
-    if not folder.parent.is_dir():
-        raise FileError(f"{folder}: folder {str(folder.parent)!r} does not exist; make it first")
-    try:
-        work = Path(tempfile.mkdtemp(prefix=f".{folder.name}.", suffix=".part", dir=folder.parent))
-    except OSError as error:
-        raise cannot_write(folder, error) from error
-    try:
-        names = [_name(number, job) for number, job in enumerate(jobs, start=1)]
-        answers = _in_parallel(jobs, [work / name for name in names])
+    """Render into a folder, all of it or nothing."""
+    with WholeFolder(folder) as work:
+        names = [sound_name(number, job, ".wav") for number, job in enumerate(jobs, start=1)]
+        tasks = [(job, work / name) for job, name in zip(jobs, names, strict=True)]
+        answers = in_parallel(RenderJob.run, tasks)
         for number, (name, answer) in enumerate(zip(names, answers, strict=True), start=1):
             answer |= {"number": number, "out": str(folder / name)}
         _write_index(work / INDEX_NAME, answers)
-        folder.mkdir(exist_ok=True)
-        for path in work.iterdir():
-            path.replace(folder / path.name)
-    except OSError as error:
-        if isinstance(error, FileError):  # it names a file in the folder that nobody asked for
-            raise FileError(str(error).replace(str(work), str(folder))) from error
-        raise cannot_write(folder, error) from error
-    finally:
-        shutil.rmtree(work, ignore_errors=True)
     return answers
 
 
-def _name(number: int, job: RenderJob) -> str:
+def sound_name(number: int, job: RenderJob, suffix: str) -> str:
+    """File name of one sound of a set, that any system takes: its number, range and rotation."""
     setting = job.setting
     position = "".join(
-        c if c.isalnum() else "-" for c in job.stage.range_names[setting.range_index]
+        c if c.isascii() and c.isalnum() else "-"
+        for c in job.stage.range_names[setting.range_index][:LONGEST_NAME]
     )
-    return f"{number:02d}-{position}-{setting.rotation:.3f}.wav"
-
-
-def _in_parallel(jobs: list[RenderJob], paths: list[Path]) -> list[dict[str, Any]]:
-    if len(jobs) == 1:
-        return [jobs[0].run(paths[0])]
-    # Spawned, not forked: threads of the parent must not be copied half-way.
-    pool = ProcessPoolExecutor(mp_context=multiprocessing.get_context("spawn"))
-    try:
-        with _stop_afterwards():
-            futures = [
-                pool.submit(RenderJob.run, job, path) for job, path in zip(jobs, paths, strict=True)
-            ]
-        return [future.result() for future in futures]
-    except BrokenProcessPool as error:
-        raise LivelagError(
-            "a rendering process was ended from outside, perhaps for want of memory"
-        ) from error
-    except BaseException:
-        for process in list((pool._processes or {}).values()):
-            process.terminate()
-        raise
-    finally:
-        pool.shutdown(cancel_futures=True)
-
-
-@contextmanager
-def _stop_afterwards() -> Iterator[None]:
-    """Put off Ctrl-C and SIGTERM, so that no process is lost while it is being started.
-
-    The processes inherit the blocked Ctrl-C and leave it to their parent.
-    """
-    asked: list[int] = []
-    ours = {
-        number: signal.signal(number, lambda number, frame: asked.append(number))
-        for number in (signal.SIGINT, signal.SIGTERM)
-    }
-    if hasattr(signal, "pthread_sigmask"):
-        signal.pthread_sigmask(signal.SIG_BLOCK, [signal.SIGINT])
-    try:
-        yield
-    finally:
-        if hasattr(signal, "pthread_sigmask"):
-            signal.pthread_sigmask(signal.SIG_UNBLOCK, [signal.SIGINT])
-        for number, handler in ours.items():
-            signal.signal(number, handler)
-    if asked:
-        raise KeyboardInterrupt
+    return f"{number:02d}-{position}-{setting.rotation:.3f}{suffix}"
 
 
 def _write_index(path: Path, answers: list[dict[str, Any]]) -> None:

@@ -103,16 +103,22 @@ def _draw_volts(
     axes.grid(alpha=0.3)
     axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=2, frameon=False, fontsize=9)
     low, high = axes.get_ylim()
+    marks = note_marks(low, high, scale)
+    names = axes.secondary_yaxis("right")
+    names.set_yticks([volts for volts, _ in marks], [name for _, name in marks])
+    names.set_ylabel("note")
+
+
+def note_marks(low_volts: float, high_volts: float, scale: Scale) -> list[tuple[float, str]]:
+    """Notes to mark on an axis of volts, as (volts, name): fewer the wider the span.
+
+    Every semitone, the notes of a C major chord, or each C.
+    """
     zero, per_octave = scale.zero_volt_note, scale.volts_per_octave
-    first, last = (volts_to_note(v, zero, per_octave) for v in (low, high))
-    # Fewer names the wider the span: every semitone, the notes of a C major chord, or each C.
+    first, last = (volts_to_note(v, zero, per_octave) for v in (low_volts, high_volts))
     kept = {0} if last - first > 30 else {0, 4, 7} if last - first > 10 else set(range(12))
     notes = [n for n in range(int(np.ceil(first)), int(last) + 1) if n % 12 in kept]
-    names = axes.secondary_yaxis("right")
-    names.set_yticks(
-        [note_to_volts(float(n), zero, per_octave) for n in notes], [note_name(n) for n in notes]
-    )
-    names.set_ylabel("note")
+    return [(note_to_volts(float(n), zero, per_octave), note_name(n)) for n in notes]
 
 
 def _draw_error(axes: Axes, times_s: Samples, error_cents: Samples) -> None:

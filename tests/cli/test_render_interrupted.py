@@ -156,20 +156,22 @@ def test_stopped_in_mid_render(start, long_song, number, name):
 
 
 @pytest.mark.parametrize(
-    ("number", "wait_s"),
+    ("option", "number", "wait_s"),
     [
-        (signal.SIGINT, 0.0), (signal.SIGINT, 0.3), (signal.SIGINT, None), (signal.SIGTERM, None),
+        ("--out", signal.SIGINT, 0.0), ("--out", signal.SIGINT, 0.3),
+        ("--out", signal.SIGINT, None), ("--out", signal.SIGTERM, None),
+        ("--page", signal.SIGINT, None),
     ],
 )  # fmt: skip
-def test_a_set_stopped_at_any_time(start, long_song, number, wait_s):
+def test_a_set_stopped_at_any_time(start, long_song, option, number, wait_s):
     song, folder = long_song
     process = start(
-        "--midi", song, "--rate", 8000, "--depth", 16, "--rotations", "0,0.5,1", "--out", "set",
+        "--midi", song, "--rate", 8000, "--depth", 16, "--rotations", "0,0.5,1", option, "set",
         cwd=folder,
     )  # fmt: skip
     wait_for(lambda: any(folder.iterdir()))
     if wait_s is None:  # in mid-render
-        wait_for(lambda: sum(p.stat().st_size for p in folder.rglob("*.wav")) > 20_000)
+        wait_for(lambda: growing(folder, 20_000))
     else:  # while its processes start
         time.sleep(wait_s)
     os.killpg(process.pid, number)  # as a terminal does: to every process of the command

@@ -1,19 +1,11 @@
 """Fixtures for tests on a dummy JACK server. Without one they skip, but under CI they fail."""
 
-import os
 import warnings
 
 import pytest
 from jack_server import PeerProcess, Server, why_not
+from needed import require
 from tmux_terminal import Terminal, why_no_tmux
-
-
-def require(reason):
-    """Skip for a reason, if there is one; under CI fail."""
-    if reason and os.environ.get("CI"):
-        pytest.fail(reason)
-    if reason:
-        pytest.skip(reason)
 
 
 @pytest.fixture
