@@ -17,7 +17,12 @@ from livelag.cli.common import (
     warn,
 )
 from livelag.cli.extras import Rows, add_extras, check_extras, show_written, write_extras
-from livelag.cli.song_options import add_song_options, read_song, song_player_settings
+from livelag.cli.song_options import (
+    add_song_options,
+    read_song,
+    refuse_midi_options,
+    song_player_settings,
+)
 
 if TYPE_CHECKING:
     from rich.table import Table
@@ -58,7 +63,8 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
 def run(args: argparse.Namespace) -> None:
     """Show how the notes of a song fare."""
     check_extras(args)
-    song = read_song(args)
+    refuse_midi_options(args)
+    _, song = read_song(args)
     from livelag.bench.arrival import arrivals, longest_setting
     from livelag.bench.timeline import lay_out
     from livelag.circuit.stage import ARRIVAL_TOLERANCE_CENTS, Setting
@@ -90,6 +96,8 @@ def run(args: argparse.Namespace) -> None:
     if args.share is not None:
         answer["share"] = args.share
         answer["longest"] = [asdict(row) for row in longest]
+    for sentence in song.warnings:
+        warn(sentence)
     if args.json:
         show_json({**answer, **written})
         return

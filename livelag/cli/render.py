@@ -16,12 +16,12 @@ from livelag.cli.common import (
     show_json,
     warn,
 )
-from livelag.cli.performance import add_key_options, add_setting_options, add_sound_options
+from livelag.cli.performance import add_setting_options, add_sound_options
+from livelag.cli.song_options import add_song_options, refuse_midi_options
 
 if TYPE_CHECKING:
     from livelag.cli.render_job import RenderJob
 
-DEFAULT_PHRASE = "procession"
 LEVEL_DBFS = -18.0
 
 
@@ -34,21 +34,7 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
         "livelag render --midi song.mid --range slow --rotation 0.7 --out slow.wav",
     )
     add_preset(parser)
-    notes = parser.add_argument_group("notes")
-    source = notes.add_mutually_exclusive_group()
-    source.add_argument(
-        "--phrase", metavar="NAME", help=f"a shipped phrase; default {DEFAULT_PHRASE}"
-    )
-    source.add_argument("--midi", metavar="FILE", help="a Standard MIDI File, format 0 or 1")
-    notes.add_argument(
-        "--channels", metavar="1,2", help="play these channels only, 1 to 16; default all, merged"
-    )
-    notes.add_argument("--tracks", metavar="1,2", help="play these tracks only, from 1")
-    notes.add_argument(
-        "--keep-gliding", action="store_true",
-        help="glide on when the music turns the glide off (controllers 65 and 121)",
-    )  # fmt: skip
-    add_key_options(notes)
+    add_song_options(parser)
     stage = parser.add_argument_group("stage")
     add_setting_options(stage)
     stage.add_argument("--bypass", action="store_true", help="without the glide, to compare with")
@@ -123,10 +109,7 @@ def _render(args: argparse.Namespace, job: RenderJob) -> None:
 
 def _refuse_contradictions(args: argparse.Namespace) -> None:
     """Refuse options that would change nothing."""
-    if args.midi is None:
-        for option in ("channels", "tracks", "keep_gliding"):
-            if getattr(args, option):
-                refuse(args, f"--{option.replace('_', '-')} goes with --midi")
+    refuse_midi_options(args)
     if args.pulse_width is not None and args.waveform != "pulse":
         refuse(args, "--pulse-width goes with --waveform pulse")
     if args.full_scale_volts is not None and not args.stereo:

@@ -14,12 +14,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from livelag.circuit.stage import GlideStage, Setting
-from livelag.cli.performance import check_method, parameters_from, player_settings_from
+from livelag.cli.performance import check_method, parameters_from
 from livelag.cli.render import LEVEL_DBFS
+from livelag.cli.song_options import read_song, song_player_settings
 from livelag.errors import InputError, UnknownNameError
 from livelag.files import WholeFiles
-from livelag.notes.midi_file import Song, read_midi_file
-from livelag.notes.phrases import DEFAULT_PHRASE, phrase
+from livelag.notes.midi_file import Song
 from livelag.notes.player import PlayerSettings
 from livelag.sound.parameters import Value
 from livelag.sound.patch import Patch
@@ -82,21 +82,11 @@ class RenderJob:
             UnknownNameError: if a name does not exist.
             FileError: if the MIDI file cannot be read.
         """
-        if args.midi is not None:
-            song = read_midi_file(
-                Path(args.midi),
-                channels=_number_set(args.channels, "--channels"),
-                tracks=_number_set(args.tracks, "--tracks"),
-            )
-            name = Path(args.midi).stem
-        else:
-            chosen = phrase(DEFAULT_PHRASE if args.phrase is None else args.phrase)
-            name = chosen.name
-            song = Song(name, chosen.messages, chosen.duration_s, chosen.note_count)
+        name, song = read_song(args)
         parameters = parameters_from(args, stage, LEVEL_DBFS)
         if args.bypass:
             parameters["bypass"] = 1.0
-        settings = player_settings_from(args, heed_switch=not args.keep_gliding)
+        settings = song_player_settings(args)
         full_scale = args.full_scale_volts
         if args.stereo and full_scale is None:
             full_scale = DEFAULT_FULL_SCALE_V
@@ -282,16 +272,6 @@ def _refuse_same_file(paths: list[Path]) -> None:
         if (real := os.path.realpath(path)) in seen:
             raise InputError(f"{path}: is named for two outputs; give each a file of its own")
         seen.add(real)
-
-
-def _number_set(text: str | None, option: str) -> set[int] | None:
-    """Numbers between commas."""
-    if text is None:
-        return None
-    try:
-        return {int(part) for part in text.split(",")}
-    except ValueError:
-        raise InputError(f"{option} is {text!r}; write numbers such as 1,2") from None
 
 
 class _progress:  # noqa: N801 - used like a function

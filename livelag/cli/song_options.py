@@ -1,36 +1,20 @@
-"""Options that say which notes are played, for commands that play them without sound."""
+"""Options that say which notes are played, for commands that play them from end to end."""
 
 from __future__ import annotations
 
 import argparse
-from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from livelag.cli.common import refuse, warn
+from livelag.cli.common import refuse
 from livelag.cli.performance import add_key_options, player_settings_from
 from livelag.errors import InputError
 
 if TYPE_CHECKING:
-    from livelag.notes.midi_file import TimedMessage
+    from livelag.notes.midi_file import Song
     from livelag.notes.player import PlayerSettings
 
-DEFAULT_PHRASE = "procession"
-
-
-@dataclass(frozen=True, slots=True)
-class SongChoice:
-    """The notes asked for.
-
-    Attributes:
-        title: the song in words.
-        messages: in order of time.
-        duration_s: where it ends, in seconds.
-    """
-
-    title: str
-    messages: tuple[TimedMessage, ...]
-    duration_s: float
+DEFAULT_PHRASE = "procession"  # told in --help, which must start without the phrases
 
 
 def add_song_options(parser: argparse.ArgumentParser) -> None:
@@ -52,8 +36,16 @@ def add_song_options(parser: argparse.ArgumentParser) -> None:
     add_key_options(notes)
 
 
-def read_song(args: argparse.Namespace) -> SongChoice:
-    """The notes asked for; what is wrong with their file goes to standard error.
+def refuse_midi_options(args: argparse.Namespace) -> None:
+    """Refuse what would change nothing where a phrase is played."""
+    if args.midi is None:
+        for option in ("channels", "tracks", "keep_gliding"):
+            if getattr(args, option) not in (None, False):
+                refuse(args, f"--{option.replace('_', '-')} goes with --midi")
+
+
+def read_song(args: argparse.Namespace) -> tuple[str, Song]:
+    """The notes asked for, after a short name for them.
 
     Raises:
         UnknownNameError: if there is no such phrase.
@@ -61,24 +53,19 @@ def read_song(args: argparse.Namespace) -> SongChoice:
         MidiFileError: if it cannot be played.
         InputError: if a channel or track is not a number that exists.
     """
+    from livelag.notes.midi_file import Song, read_midi_file
+
     if args.midi is None:
-        for option in ("channels", "tracks", "keep_gliding"):
-            if getattr(args, option) not in (None, False):
-                refuse(args, f"--{option.replace('_', '-')} goes with --midi")
         from livelag.notes.phrases import phrase
 
-        chosen = phrase(args.phrase or DEFAULT_PHRASE)
-        return SongChoice(chosen.name, chosen.messages, chosen.duration_s)
-    from livelag.notes.midi_file import read_midi_file
-
+        chosen = phrase(DEFAULT_PHRASE if args.phrase is None else args.phrase)
+        return chosen.name, Song(chosen.name, chosen.messages, chosen.duration_s, chosen.note_count)
     song = read_midi_file(
         Path(args.midi),
         channels=_number_set(args.channels, "--channels"),
         tracks=_number_set(args.tracks, "--tracks"),
     )
-    for sentence in song.warnings:
-        warn(sentence)
-    return SongChoice(song.title, song.messages, song.duration_s)
+    return Path(args.midi).stem, song
 
 
 def song_player_settings(args: argparse.Namespace) -> PlayerSettings:

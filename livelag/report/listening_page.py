@@ -21,6 +21,7 @@ import livelag
 from livelag.circuit.stage import ARRIVAL_TOLERANCE_CENTS
 from livelag.report import curve_drawing
 from livelag.report.curve_drawing import CurveDrawing
+from livelag.report.templating import page_templates
 from livelag.units import format_value
 
 GENERATOR = "livelag"
@@ -86,16 +87,7 @@ class Page:
 
 def page_html(page: Page) -> str:
     """The whole page as text, to be written as UTF-8."""
-    from jinja2 import Environment, PackageLoader, StrictUndefined
-
-    environment = Environment(
-        loader=PackageLoader("livelag.report", "templates"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-        keep_trailing_newline=True,
-    )
+    environment = page_templates()
     environment.filters["quantity"] = _quantity
     style = environment.get_template("listening_page.css").render()
     script = environment.get_template("listening_page.js").render()

@@ -10,6 +10,7 @@ from typing import Any
 from livelag.bench.sheet import Sheet, SheetRow
 from livelag.report.sheet_page import PAPERS_MM
 from livelag.report.sheet_words import hertz, seconds, seconds_within, volts_within
+from livelag.report.templating import page_templates
 
 _ALTS = (
     "Page 1: drawing of the stage, parts, test signals and cautions.",
@@ -25,27 +26,23 @@ def sheet_html(sheet: Sheet, paper: str, pages: Sequence[bytes]) -> str:
         paper: a name of `livelag.report.sheet_page.PAPERS_MM`.
         pages: both pages as SVG.
     """
-    from jinja2 import Environment, PackageLoader, StrictUndefined
-
-    environment = Environment(
-        loader=PackageLoader("livelag.report"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        keep_trailing_newline=True,
-    )
     width, height = PAPERS_MM[paper]
-    return environment.get_template("sheet.html").render(
-        title=sheet.stage.title,
-        about=sheet.stage.about,
-        paper=paper,
-        width_mm=width,
-        height_mm=height,
-        pages=[
-            {"svg": base64.b64encode(svg).decode("ascii"), "alt": alt}
-            for svg, alt in zip(pages, _ALTS, strict=True)
-        ],
-        cautions=sheet.cautions,
-        tables=[_parts(sheet), _signals(sheet), *_expectations(sheet)],
+    return (
+        page_templates()
+        .get_template("sheet.html")
+        .render(
+            title=sheet.stage.title,
+            about=sheet.stage.about,
+            paper=paper,
+            width_mm=width,
+            height_mm=height,
+            pages=[
+                {"svg": base64.b64encode(svg).decode("ascii"), "alt": alt}
+                for svg, alt in zip(pages, _ALTS, strict=True)
+            ],
+            cautions=sheet.cautions,
+            tables=[_parts(sheet), _signals(sheet), *_expectations(sheet)],
+        )
     )
 
 
