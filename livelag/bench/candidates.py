@@ -282,7 +282,7 @@ def candidate_stage(candidate: Candidate, wishes: Wishes, base: GlideStage) -> G
         own = candidate.series[k] if candidate.connection == SERIES_SWITCHED and k > 0 else None
         ranges.append(Range(name, tuple(connects), own))
     shortest, longest = (format_value(wishes.times_s[end], "s") for end in (0, -1))
-    count = f"{wishes.ranges} ranges" if wishes.ranges > 1 else "one range"
+    count = ("one range", "two ranges", "three ranges")[wishes.ranges - 1]
     return replace(
         base,
         title=f"{shortest} to {longest}, {count}",
