@@ -7,7 +7,7 @@ inside the window that the bound leaves are tried.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -29,7 +29,8 @@ def search_shared(space: Space, connection: str, count: int) -> Best:
     for k in range(space.wishes.ranges):
         near = _distance(centres[k], _log_capacitances(space, connection, k))
         errors = np.maximum(errors, halves[k] + near)
-    fixed = _fixed_points(space, connection)
+    plain = _plain_points(space)
+    fixed = plain + _least_tuning(space, connection)
     bounds = errors / LOG_ERROR_PER_POINT + fixed
     bounds[errors > space.limit + SLACK] = np.inf
     for flat in np.argsort(bounds, axis=None, kind="stable"):
@@ -38,12 +39,11 @@ def search_shared(space: Space, connection: str, count: int) -> Best:
         if not np.isfinite(bound) or bound > best.threshold + SLACK:
             break
 
-        def room(fixed_here: float = float(fixed[row, pot])) -> float:
-            points = best.threshold - fixed_here
-            return min(points * LOG_ERROR_PER_POINT, space.limit) + SLACK
-
-        where = _Where(connection, centres[:, row, pot], halves[:, row, pot], room)
-        for chosen in _walk(space, where, ()):
+        pair = _Pair(
+            connection, row, pot, centres[:, row, pot], halves[:, row, pot],
+            float(fixed[row, pot]), float(plain[row, pot]), best,
+        )  # fmt: skip
+        for chosen in _walk(space, pair, (), 0.0):
             candidate = space.candidate(connection, (row,), pot, chosen)
             if candidate.error_log <= space.limit:
                 best.add(candidate)
@@ -55,17 +55,21 @@ def _stack(space: Space, low: Floats, high: Floats) -> tuple[Floats, Floats]:
     return np.stack([pair[0] for pair in pairs]), np.stack([pair[1] for pair in pairs])
 
 
-def _fixed_points(space: Space, connection: str) -> Floats:
-    """(resistors, pots) points that no choice of capacitors can save."""
-    scoring, ranges = space.scoring, space.wishes.ranges
+def _plain_points(space: Space) -> Floats:
+    """(resistors, pots) points for drive and parts."""
+    drive = space.scoring.drive_points(space.ohms[:, None] + space.pot_end)
+    points: Floats = drive + space.scoring.part_points(1 + 1 + space.wishes.ranges)
+    return points
+
+
+def _least_tuning(space: Space, connection: str) -> Floats:
+    """(resistors, pots) points for tuning that no choice of capacitors can save."""
     track = space.ohms[:, None] + space.pot_track
     # T is monotonic in G at a given R, so its least is at the least or the greatest leak.
-    most = space.leaks.max() * (ranges if connection == ADDED else 1)
-    tuning = np.minimum(
-        scoring.tuning_cents(track, space.leaks.min()), scoring.tuning_cents(track, most)
-    )
-    drive = scoring.drive_points(space.ohms[:, None] + space.pot_end)
-    points: Floats = tuning / TUNING_CENTS_PER_POINT + drive + scoring.part_points(1 + 1 + ranges)
+    least = float(space.leaks.min())
+    most = float(space.leaks.max()) * (space.wishes.ranges if connection == ADDED else 1)
+    cents = np.minimum(*(space.scoring.tuning_cents(track, np.array(g)) for g in (least, most)))
+    points: Floats = cents / TUNING_CENTS_PER_POINT
     return points
 
 
@@ -98,26 +102,52 @@ def _distance(points: Floats, values: Floats | None) -> Floats:
 
 
 @dataclass(frozen=True, slots=True)
-class _Where:
-    """One pair of resistor and pot: (ranges,) centres and halves, and the error still allowed."""
+class _Pair:
+    """A pair of resistor and pot.
+
+    Attributes:
+        connection: how the switch connects.
+        resistor: index.
+        pot: index.
+        centres: (ranges,) ln C that suit best.
+        halves: (ranges,) errors that remain with these.
+        fixed: points that no choice of capacitors can save.
+        plain: those of them that are not for tuning.
+        best: what was found so far.
+    """
 
     connection: str
+    resistor: int
+    pot: int
     centres: Floats
     halves: Floats
-    room: Callable[[], float]
+    fixed: float
+    plain: float
+    best: Best
 
 
-def _walk(space: Space, where: _Where, chosen: tuple[int, ...]) -> Iterator[tuple[int, ...]]:
-    """Every choice of capacitors whose ranges all come within the error allowed, nearest first."""
-    k = len(chosen)
-    if k == space.wishes.ranges:
-        yield chosen
-        return
-    there = float(space.farads[list(chosen)].sum()) if where.connection == ADDED else 0.0
-    errors = np.abs(np.log(there + space.farads) - where.centres[k]) + where.halves[k]
-    for index in np.argsort(errors, kind="stable").tolist():
-        if errors[index] > where.room():
+def _walk(
+    space: Space, pair: _Pair, chosen: tuple[int, ...], error: float
+) -> Iterator[tuple[int, ...]]:
+    """Every choice of capacitors that can be among the best, the nearest or best first."""
+    k, ranges = len(chosen), space.wishes.ranges
+    before = list(chosen) if pair.connection == ADDED else []
+    farads = float(space.farads[before].sum()) + space.farads
+    errors = np.maximum(np.abs(np.log(farads) - pair.centres[k]) + pair.halves[k], error)
+    scores = errors / LOG_ERROR_PER_POINT + pair.fixed
+    if k == ranges - 1:
+        leaks = float(space.leaks[before].sum()) + space.leaks
+        track = np.array(space.ohms[pair.resistor] + space.pot_track[pair.pot])
+        tuning = space.scoring.tuning_cents(track, leaks) / TUNING_CENTS_PER_POINT
+        scores = errors / LOG_ERROR_PER_POINT + pair.plain + tuning
+    near = np.flatnonzero((errors <= space.limit + SLACK) & (scores <= pair.best.threshold + SLACK))
+    for index in near[np.argsort(scores[near], kind="stable")].tolist():
+        if scores[index] > pair.best.threshold + SLACK:  # it may have fallen since
             return
         more = (*chosen, index)
-        if space.enough((), more):
-            yield from _walk(space, where, more)
+        if not space.enough((), more):
+            continue
+        if k == ranges - 1:
+            yield more
+        else:
+            yield from _walk(space, pair, more, float(errors[index]))

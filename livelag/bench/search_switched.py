@@ -1,12 +1,13 @@
 """Search over stages in which every range has a series resistor and a capacitor of its own.
 
-With a pot given, ranges are chosen alone and joined: a choice for one range whose own part of
-the score is beyond the best found can be in no better stage. How good the best is at least,
-is found first from a few good choices of each range.
+With a pot given, ranges are chosen alone and joined in batches, the most promising first: a
+choice for one range whose own part of the score is beyond the best found can be in no better
+stage, nor can a beginning of a stage whose score is.
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,8 +19,7 @@ from livelag.bench.wishes import SERIES_SWITCHED
 
 Indices = NDArray[np.int64]
 
-_FIRST_FEW = 4
-_MOST_JOINED = 2_000_000
+_BATCH = 50_000  # stages joined at a time
 
 
 @dataclass(frozen=True)
@@ -31,15 +31,10 @@ class _Choices:
     error: Floats
     bound: Floats
 
-    def first(self, count: int) -> _Choices:
-        return self.at(slice(0, count))
-
     def within(self, threshold: float) -> _Choices:
-        return self.first(int(np.searchsorted(self.bound, threshold + SLACK, "right")))
-
-    def at(self, where: slice) -> _Choices:
+        count = int(np.searchsorted(self.bound, threshold + SLACK, "right"))
         return _Choices(
-            self.resistor[where], self.capacitor[where], self.error[where], self.bound[where]
+            self.resistor[:count], self.capacitor[:count], self.error[:count], self.bound[:count]
         )
 
 
@@ -51,55 +46,78 @@ class _Joined:
     capacitors: Indices
     error: Floats
 
-    def keep(self, which: NDArray[np.bool_]) -> _Joined:
+    def keep(self, which: NDArray[np.bool_] | slice) -> _Joined:
         return _Joined(self.resistors[which], self.capacitors[which], self.error[which])
 
 
 def search_switched(space: Space, count: int) -> Best:
     """The best candidates of the connection ``series-switched``."""
     best = Best(count)
-    per_pot = [_choices(space, pot) for pot in range(len(space.pots))]
-    threshold = _first_threshold(space, per_pot, count)
-    pots = [pot for pot, choices in enumerate(per_pot) if all(len(c.bound) for c in choices)]
-    pots.sort(key=lambda pot: max(c.bound[0] for c in per_pot[pot]))
-    for pot in pots:
-        threshold = min(threshold, best.threshold)
-        choices = [one.within(threshold) for one in per_pot[pot]]
-        for joined in _join(space, pot, choices, threshold):
-            for resistors, capacitors in zip(
-                joined.resistors.tolist(), joined.capacitors.tolist(), strict=True
-            ):
-                candidate = space.candidate(
-                    SERIES_SWITCHED, tuple(resistors[::-1]), pot, tuple(capacitors[::-1])
-                )
-                if candidate.error_log <= space.limit:
-                    best.add(candidate)
+    bounds = [_pot_bound(space, pot) for pot in range(len(space.pots))]
+    for pot in np.argsort(bounds, kind="stable").tolist():
+        if not np.isfinite(bounds[pot]) or bounds[pot] > best.threshold + SLACK:
+            break
+        slowest, *rest = _choices(space, pot, best.threshold)
+        begun = _Joined(slowest.resistor[:, None], slowest.capacitor[:, None], slowest.error)
+        for stages in _stages(space, pot, begun, rest, best):
+            _add(space, pot, stages, best)
     return best
 
 
-def _choices(space: Space, pot: int) -> list[_Choices]:
-    """Choices for each range, slowest first, with the least score of any stage they are in."""
-    ranges = space.wishes.ranges
-    errors = [_errors(space, pot, k) for k in range(ranges)]
-    track = space.ohms[:, None] + space.pot_track[pot]
-    tuning = space.scoring.tuning_cents(track, space.leaks[None, :]) / TUNING_CENTS_PER_POINT
-    allowed = errors[-1] <= space.limit + SLACK
-    least_tuning = float(tuning[allowed].min()) if allowed.any() else 0.0
-    drive = space.scoring.drive_points(space.ohms + space.pot_end[pot])[:, None]
-    parts = space.scoring.part_points(2 * ranges + 1)
+def _pot_bound(space: Space, pot: int) -> float:
+    """The least that a stage with this pot can score; infinite if no range comes near enough."""
+    return max(float(bounds.min()) for _, bounds in _bounds(space, pot))
+
+
+def _add(space: Space, pot: int, stages: _Joined, best: Best) -> None:
+    """Add the best of a batch of whole stages."""
+    scores = _scores(space, pot, stages)
+    if len(scores) > best.count:
+        stages = stages.keep(scores <= np.partition(scores, best.count - 1)[best.count - 1] + SLACK)
+    for resistors, capacitors in zip(
+        stages.resistors.tolist(), stages.capacitors.tolist(), strict=True
+    ):
+        candidate = space.candidate(
+            SERIES_SWITCHED, tuple(resistors[::-1]), pot, tuple(capacitors[::-1])
+        )
+        if candidate.error_log <= space.limit:
+            best.add(candidate)
+
+
+def _choices(space: Space, pot: int, threshold: float) -> list[_Choices]:
+    """Choices for each range that can score the threshold or less, slowest range first."""
     found = []
-    for k in reversed(range(ranges)):
-        own = tuning if k == ranges - 1 else least_tuning
-        bound = errors[k] / LOG_ERROR_PER_POINT + drive + parts + own
-        resistor, capacitor = np.nonzero(errors[k] <= space.limit + SLACK)
-        order = np.argsort(bound[resistor, capacitor], kind="stable")
+    for errors, bounds in _bounds(space, pot):
+        resistor, capacitor = np.nonzero((bounds <= threshold + SLACK) & np.isfinite(bounds))
+        order = np.argsort(bounds[resistor, capacitor], kind="stable")
         resistor, capacitor = resistor[order], capacitor[order]
         found.append(
-            _Choices(
-                resistor, capacitor, errors[k][resistor, capacitor], bound[resistor, capacitor]
-            )
+            _Choices(resistor, capacitor, errors[resistor, capacitor], bounds[resistor, capacitor])
         )
     return found
+
+
+def _bounds(space: Space, pot: int) -> Iterator[tuple[Floats, Floats]]:
+    """(resistors, capacitors) error, and least score of a stage that has it, slowest range first.
+
+    The score is infinite where the error is more than the limit.
+    """
+    ranges = space.wishes.ranges
+    track = space.ohms[:, None] + space.pot_track[pot]
+    tuning = space.scoring.tuning_cents(track, space.leaks[None, :]) / TUNING_CENTS_PER_POINT
+    drive = space.scoring.drive_points(space.ohms + space.pot_end[pot])[:, None]
+    fixed = drive + space.scoring.part_points(2 * ranges + 1)
+    for k in reversed(range(ranges)):
+        errors = _errors(space, pot, k)
+        far = errors > space.limit + SLACK
+        if k == ranges - 1:
+            own = tuning
+            least_tuning = float(np.where(far, np.inf, tuning).min())
+        else:
+            own = least_tuning
+        bounds = errors / LOG_ERROR_PER_POINT + fixed + own
+        bounds[far] = np.inf
+        yield errors, bounds
 
 
 def _errors(space: Space, pot: int, k: int) -> Floats:
@@ -111,60 +129,38 @@ def _errors(space: Space, pot: int, k: int) -> Floats:
     return errors
 
 
-def _first_threshold(space: Space, per_pot: list[list[_Choices]], count: int) -> float:
-    """A score that so many stages reach: from the first few choices of each range."""
-    few, ranges = _FIRST_FEW, space.wishes.ranges
-    most = max((len(one.bound) for choices in per_pot for one in choices), default=0)
-    while few**ranges * len(per_pot) <= _MOST_JOINED:
-        scores = [
-            _scores(space, pot, joined)
-            for pot, choices in enumerate(per_pot)
-            for joined in _join(space, pot, [one.first(few) for one in choices], np.inf)
-        ]
-        found = np.sort(np.concatenate(scores)) if scores else np.empty(0)
-        if len(found) >= count:
-            return float(found[count - 1])
-        if few >= most:
-            break
-        few *= 2
-    return float("inf")
+def _stages(
+    space: Space, pot: int, begun: _Joined, rest: list[_Choices], best: Best
+) -> Iterator[_Joined]:
+    """Whole stages that can be among the best as far as these are known, batch by batch."""
+    if not rest:
+        yield begun
+        return
+    start = 0
+    while start < len(begun.error):
+        faster = rest[0].within(best.threshold)
+        step = max(1, _BATCH // max(1, len(faster.error)))
+        part = begun.keep(slice(start, start + step))
+        part = part.keep(_scores(space, pot, part) <= best.threshold + SLACK)
+        start += step
+        joined = _extend(space, part, faster)
+        joined = joined.keep(_scores(space, pot, joined) <= best.threshold + SLACK)
+        if len(rest) == 1:  # all resistors alike need no switch
+            joined = joined.keep((joined.resistors != joined.resistors[:, :1]).any(axis=1))
+        if len(joined.error):
+            yield from _stages(space, pot, joined, rest[1:], best)
 
 
-def _join(space: Space, pot: int, choices: list[_Choices], threshold: float) -> list[_Joined]:
-    """Every stage of these choices that can score the threshold or less, in batches."""
-    slowest = choices[0]
-    batches = [_Joined(slowest.resistor[:, None], slowest.capacitor[:, None], slowest.error)]
-    for nth, faster in enumerate(choices[1:], start=2):
-        whole = nth == len(choices)
-        step = max(1, _MOST_JOINED // max(1, len(faster.bound)))
-        batches = [
-            kept
-            for batch in batches
-            for start in range(0, len(batch.error), step)
-            if len(
-                (kept := _extend(space, pot, batch, slice(start, start + step), faster, threshold,
-                                 whole)).error
-            )
-        ]  # fmt: skip
-    return batches
-
-
-def _extend(
-    space: Space, pot: int, begun: _Joined, part: slice, faster: _Choices, threshold: float,
-    whole: bool,
-) -> _Joined:  # fmt: skip
-    count, more = len(begun.error[part]), len(faster.error)
+def _extend(space: Space, begun: _Joined, faster: _Choices) -> _Joined:
+    """Each beginning with each choice of the next range, as far as there are parts."""
+    count, more = len(begun.error), len(faster.error)
     joined = _Joined(
-        _product(begun.resistors[part], faster.resistor),
-        _product(begun.capacitors[part], faster.capacitor),
-        np.maximum(np.repeat(begun.error[part], more), np.tile(faster.error, count)),
+        _product(begun.resistors, faster.resistor),
+        _product(begun.capacitors, faster.capacitor),
+        np.maximum(np.repeat(begun.error, more), np.tile(faster.error, count)),
     )
-    joined = joined.keep(_scores(space, pot, joined) <= threshold + SLACK)
     joined = joined.keep(_enough(joined.resistors, [lot.quantity for lot in space.resistors]))
-    joined = joined.keep(_enough(joined.capacitors, [lot.quantity for lot in space.capacitors]))
-    if whole:  # all resistors alike need no switch
-        joined = joined.keep((joined.resistors != joined.resistors[:, :1]).any(axis=1))
-    return joined
+    return joined.keep(_enough(joined.capacitors, [lot.quantity for lot in space.capacitors]))
 
 
 def _product(begun: Indices, faster: Indices) -> Indices:

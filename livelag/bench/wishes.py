@@ -28,6 +28,7 @@ ONE_POT_RATIO = (ADDED, EXCHANGED)  # one series resistor: every range has the s
 # 0.8 x 0.9 / 1.1 x 1.5 is nearly 1.
 DEFAULT_OVERLAP = 1.5
 DEFAULT_WITHIN = 0.25
+MOST_WITHIN = 9.0
 MOST_RANGES = 3
 RANGE_NAMES = {1: ("all",), 2: ("fast", "slow"), 3: ("fast", "middle", "slow")}
 SHORTEST, LONGEST = "shortest", "longest"
@@ -42,7 +43,8 @@ class Wishes:
             neighbours, the longest; so one more than there are ranges, 1 to 3.
         overlap_ratio: q; each hand-over is the middle of the overlap, in ratio. 1 or more.
         ends: rotations at which the ends of the ranges are wished, from 0 to 1.
-        within: the most that a time may be off, as a fraction: 0.25 is a factor of 1.25.
+        within: the most that a time may be off, as a fraction: 0.25 is a factor of 1.25. At most
+            `MOST_WITHIN`.
         connections: the ways to connect the range switch that may be used, of `CONNECTIONS`.
 
     Raises:
@@ -88,6 +90,11 @@ class Wishes:
             f"ends are {low_end!r} and {high_end!r}; they must be rotations that rise, 0 to 1",
         )
         require_positive(self.within, "within")
+        require(
+            self.within <= MOST_WITHIN,
+            f"within is {self.within:g}; {MOST_WITHIN:g}, a factor of {1 + MOST_WITHIN:g}, is the "
+            "most that still makes sense",
+        )
         require(bool(self.connections), "connections: there are none; name one or more")
         for name in self.connections:
             if name not in CONNECTIONS:

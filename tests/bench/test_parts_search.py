@@ -62,7 +62,7 @@ def searches(draw):
         times.append(times[-1] * (1.0 + pot / series) * draw(st.floats(0.4, 1.2)) + 1e-6)
     overlap = draw(st.floats(1.0, 2.0))
     allowed = draw(st.sampled_from([CONNECTIONS, CONNECTIONS[:2], CONNECTIONS[2:]]))
-    within = draw(st.sampled_from([1.5, 20.0, 1000.0]))
+    within = draw(st.sampled_from([1.5, 4.0, 9.0]))
     try:
         wishes = Wishes(tuple(times), overlap, within=within, connections=allowed)
     except InputError:  # ranges that would swallow one another
