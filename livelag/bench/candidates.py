@@ -2,7 +2,7 @@
 
 | symbol | name here         | meaning                                                   | unit |
 |--------|-------------------|-----------------------------------------------------------|------|
-| E      | ``error_log``     | worst |ln(time / time wished)| over both ends of all ranges | 1   |
+| E      | ``rms_log``       | root mean square of ln(time / time wished) over all ends  | 1    |
 | T      | ``tuning_cents``  | scale and offset error at the slowest setting             | cent |
 | n      | ``part_count``    | series resistors, pot and capacitors                      | 1    |
 | I      | ``drive_a``       | peak current of the driving buffer at the fastest setting | A    |
@@ -23,6 +23,7 @@ better. 5 mA is 10 V across 2 kohm, the load that general-purpose op-amps are sp
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import TypeVar
 
@@ -160,8 +161,13 @@ class Candidate:
     pareto: bool = False
 
     @property
-    def error_log(self) -> float:
+    def rms_log(self) -> float:
         """E."""
+        return _rms(self.reached)
+
+    @property
+    def worst_log(self) -> float:
+        """|ln(time / time wished)| of the wish that is missed most."""
         return max(row.error_log for row in self.reached)
 
     @property
@@ -183,7 +189,7 @@ class Candidate:
     def criteria(self) -> tuple[float, float, int, float]:
         """E, T, n and I, each better when less."""
         tuning = self.bias_cents - self.insulation_cents_per_octave
-        return self.error_log, tuning, self.part_count, self.drive_a
+        return self.rms_log, tuning, self.part_count, self.drive_a
 
     @property
     def order(self) -> tuple[float, ...]:
@@ -218,9 +224,8 @@ def make_candidate(
     leak = sum(part.leakage_siemens for part in slowest)
     resistance = each_series[-1] + pot.resistance_ohms
     least = min(each_series) + pot.end_ohms
-    error = max(row.error_log for row in reached)
     score = (
-        error / LOG_ERROR_PER_POINT
+        _rms(reached) / LOG_ERROR_PER_POINT
         + scoring.tuning_cents(resistance, leak) / TUNING_CENTS_PER_POINT
         + scoring.part_points(len(series) + 1 + len(capacitors))
         + float(scoring.drive_points(least))
@@ -240,6 +245,10 @@ def make_candidate(
         scoring.leap_v / least,  # (2)
         score,
     )
+
+
+def _rms(reached: Sequence[Reached]) -> float:
+    return math.sqrt(sum(row.error_log**2 for row in reached) / len(reached))
 
 
 def mark_pareto(candidates: list[Candidate]) -> list[Candidate]:

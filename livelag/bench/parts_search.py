@@ -111,7 +111,7 @@ def _no_candidate(wishes: Wishes, pool: Pool, around: GlideStage) -> str:
     if nearest is None:
         return f"no candidate {allowed}, nor anywhere near; see whether the parts suit these times"
     worst = nearest.worst
-    factor = math.exp(nearest.error_log)
+    factor = math.exp(nearest.worst_log)
     ways = [_one_pot_ways(wishes)] if _one_pot_is_to_blame(wishes) else []
     if not ways:
         ways.append(
@@ -150,7 +150,7 @@ def _rounded_up(factor: float) -> str:
 
 
 def _nearest(wishes: Wishes, pool: Pool, around: GlideStage) -> Candidate | None:
-    """The candidate with the least error, however large that is."""
+    """The candidate with the least E, however large that is."""
     only_error = replace(
         Scoring.around(around, wishes.ranges), divider=0.0, leap_v=0.0,
         least_parts=2 * wishes.ranges + 1,
@@ -159,7 +159,7 @@ def _nearest(wishes: Wishes, pool: Pool, around: GlideStage) -> Candidate | None
         space = Space(pool, wishes, only_error, limit)
         found = [one for name in wishes.usable_connections for one in _search(space, name, 1)]
         if found:
-            return min(found, key=lambda one: one.error_log)
+            return min(found, key=lambda one: one.rms_log)
     return None
 
 

@@ -10,9 +10,16 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from livelag.bench.candidates import Candidate, Scoring, evenest_taper, make_candidate
+from livelag.bench.candidates import (
+    LOG_ERROR_PER_POINT,
+    TUNING_CENTS_PER_POINT,
+    Candidate,
+    Scoring,
+    evenest_taper,
+    make_candidate,
+)
 from livelag.bench.stock import Pool
-from livelag.bench.wishes import SERIES_SWITCHED, Wishes
+from livelag.bench.wishes import ADDED, SERIES_SWITCHED, Wishes
 
 Floats = NDArray[np.float64]
 
@@ -31,7 +38,7 @@ class Space:
         pot_track: (pots,) ohms at rotation 1.
         farads: (capacitors,) values.
         leaks: (capacitors,) siemens.
-        limit: the most that E may be.
+        limit: the most that |ln(time / time wished)| may be.
     """
 
     def __init__(self, pool: Pool, wishes: Wishes, scoring: Scoring, limit: float) -> None:
@@ -50,14 +57,31 @@ class Space:
         self.log_targets = np.log(np.array(wishes.targets))
 
     def centres(self, k: int, low_ohms: Floats, high_ohms: Floats) -> tuple[Floats, Floats]:
-        """The ln C that suits range k best, and the error that remains with it.
+        """m, the ln C that suits range k best, and h, what remains even then.
 
-        Of a range with ln R from x to y, wished from a to b, the error with a capacitor is
-        max(|x + ln C - a|, |y + ln C - b|) = |ln C - m| + h.
+        Of a range with ln R from x to y, wished from a to b, the errors with a capacitor are
+        x + ln C - a and y + ln C - b: with m their middle and h half their difference the larger
+        is |ln C - m| + h in size, and half the sum of their squares is (ln C - m)^2 + h^2.
         """
         of_low = self.log_targets[k, 0] - np.log(low_ohms)
         of_high = self.log_targets[k, 1] - np.log(high_ohms)
         return (of_low + of_high) / 2.0, np.abs(of_low - of_high) / 2.0
+
+    def error_points(self, squares: Floats) -> Floats:
+        """Points for E, from the sum over ranges of (ln C - m)^2 + h^2."""
+        points: Floats = np.sqrt(squares / self.wishes.ranges) / LOG_ERROR_PER_POINT
+        return points
+
+    def least_tuning_points(self, connection: str, track_ohms: Floats) -> Floats:
+        """Points for T, at R of the slowest range, that no choice of capacitors can save."""
+        # T is monotonic in G at a given R, so its least is at the least or the greatest leak.
+        most = float(self.leaks.max()) * (self.wishes.ranges if connection == ADDED else 1)
+        ends = [
+            self.scoring.tuning_cents(track_ohms, np.full_like(track_ohms, leak))
+            for leak in (float(self.leaks.min()), most)
+        ]
+        points: Floats = np.minimum(*ends) / TUNING_CENTS_PER_POINT
+        return points
 
     def enough(self, resistors: tuple[int, ...], capacitors: tuple[int, ...]) -> bool:
         """Whether there are as many of each lot as are used."""

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from livelag.bench.candidates import LOG_ERROR_PER_POINT, TUNING_CENTS_PER_POINT
+from livelag.bench.candidates import TUNING_CENTS_PER_POINT
 from livelag.bench.parts_space import SLACK, Best, Floats, Space
 from livelag.bench.wishes import ADDED
 
@@ -25,14 +25,15 @@ def search_shared(space: Space, connection: str, count: int) -> Best:
     low = space.ohms[:, None] + space.pot_low
     high = space.ohms[:, None] + space.pot_high
     centres, halves = _stack(space, low, high)
-    errors = halves[0]
+    squares, worst = np.zeros_like(low), np.zeros_like(low)
     for k in range(space.wishes.ranges):
         near = _distance(centres[k], _log_capacitances(space, connection, k))
-        errors = np.maximum(errors, halves[k] + near)
-    plain = _plain_points(space)
-    fixed = plain + _least_tuning(space, connection)
-    bounds = errors / LOG_ERROR_PER_POINT + fixed
-    bounds[errors > space.limit + SLACK] = np.inf
+        squares += near**2 + halves[k] ** 2
+        worst = np.maximum(worst, near + halves[k])
+    track = space.ohms[:, None] + space.pot_track
+    fixed = _plain_points(space) + space.least_tuning_points(connection, track)
+    bounds = space.error_points(squares) + fixed
+    bounds[worst > space.limit + SLACK] = np.inf
     for flat in np.argsort(bounds, axis=None, kind="stable"):
         row, pot = (int(index) for index in np.unravel_index(flat, bounds.shape))
         bound = bounds[row, pot]
@@ -40,12 +41,12 @@ def search_shared(space: Space, connection: str, count: int) -> Best:
             break
 
         pair = _Pair(
-            connection, row, pot, centres[:, row, pot], halves[:, row, pot],
-            float(fixed[row, pot]), float(plain[row, pot]), best,
+            connection, centres[:, row, pot], halves[:, row, pot], float(fixed[row, pot]),
+            float(track[row, pot]), best,
         )  # fmt: skip
-        for chosen in _walk(space, pair, (), 0.0):
+        for chosen in _walk(space, pair, (), float((pair.halves**2).sum())):
             candidate = space.candidate(connection, (row,), pot, chosen)
-            if candidate.error_log <= space.limit:
+            if candidate.worst_log <= space.limit:
                 best.add(candidate)
     return best
 
@@ -59,17 +60,6 @@ def _plain_points(space: Space) -> Floats:
     """(resistors, pots) points for drive and parts."""
     drive = space.scoring.drive_points(space.ohms[:, None] + space.pot_end)
     points: Floats = drive + space.scoring.part_points(1 + 1 + space.wishes.ranges)
-    return points
-
-
-def _least_tuning(space: Space, connection: str) -> Floats:
-    """(resistors, pots) points for tuning that no choice of capacitors can save."""
-    track = space.ohms[:, None] + space.pot_track
-    # T is monotonic in G at a given R, so its least is at the least or the greatest leak.
-    least = float(space.leaks.min())
-    most = float(space.leaks.max()) * (space.wishes.ranges if connection == ADDED else 1)
-    cents = np.minimum(*(space.scoring.tuning_cents(track, np.array(g)) for g in (least, most)))
-    points: Floats = cents / TUNING_CENTS_PER_POINT
     return points
 
 
@@ -107,40 +97,39 @@ class _Pair:
 
     Attributes:
         connection: how the switch connects.
-        resistor: index.
-        pot: index.
         centres: (ranges,) ln C that suit best.
         halves: (ranges,) errors that remain with these.
         fixed: points that no choice of capacitors can save.
-        plain: those of them that are not for tuning.
+        track: R in ohms.
         best: what was found so far.
     """
 
     connection: str
-    resistor: int
-    pot: int
     centres: Floats
     halves: Floats
     fixed: float
-    plain: float
+    track: float
     best: Best
 
 
 def _walk(
-    space: Space, pair: _Pair, chosen: tuple[int, ...], error: float
+    space: Space, pair: _Pair, chosen: tuple[int, ...], squares: float
 ) -> Iterator[tuple[int, ...]]:
-    """Every choice of capacitors that can be among the best, the nearest or best first."""
+    """Every choice of capacitors that can be among the best, the most promising first.
+
+    ``squares`` is the least sum of squares that a stage with those chosen can have.
+    """
     k, ranges = len(chosen), space.wishes.ranges
     before = list(chosen) if pair.connection == ADDED else []
-    farads = float(space.farads[before].sum()) + space.farads
-    errors = np.maximum(np.abs(np.log(farads) - pair.centres[k]) + pair.halves[k], error)
-    scores = errors / LOG_ERROR_PER_POINT + pair.fixed
+    away = np.abs(np.log(float(space.farads[before].sum()) + space.farads) - pair.centres[k])
+    sums = squares + away**2
+    scores = space.error_points(sums) + pair.fixed
     if k == ranges - 1:
         leaks = float(space.leaks[before].sum()) + space.leaks
-        track = np.array(space.ohms[pair.resistor] + space.pot_track[pair.pot])
-        tuning = space.scoring.tuning_cents(track, leaks) / TUNING_CENTS_PER_POINT
-        scores = errors / LOG_ERROR_PER_POINT + pair.plain + tuning
-    near = np.flatnonzero((errors <= space.limit + SLACK) & (scores <= pair.best.threshold + SLACK))
+        scores += _tuning_points(space, pair.track, leaks) - _least_tuning(space, pair)
+    near = np.flatnonzero(
+        (away + pair.halves[k] <= space.limit + SLACK) & (scores <= pair.best.threshold + SLACK)
+    )
     for index in near[np.argsort(scores[near], kind="stable")].tolist():
         if scores[index] > pair.best.threshold + SLACK:  # it may have fallen since
             return
@@ -150,4 +139,12 @@ def _walk(
         if k == ranges - 1:
             yield more
         else:
-            yield from _walk(space, pair, more, float(errors[index]))
+            yield from _walk(space, pair, more, float(sums[index]))
+
+
+def _tuning_points(space: Space, track: float, leaks: Floats) -> Floats:
+    return space.scoring.tuning_cents(np.full_like(leaks, track), leaks) / TUNING_CENTS_PER_POINT
+
+
+def _least_tuning(space: Space, pair: _Pair) -> float:
+    return float(space.least_tuning_points(pair.connection, np.array([pair.track]))[0])

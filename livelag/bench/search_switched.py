@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from livelag.bench.candidates import LOG_ERROR_PER_POINT, TUNING_CENTS_PER_POINT
+from livelag.bench.candidates import TUNING_CENTS_PER_POINT
 from livelag.bench.parts_space import SLACK, Best, Floats, Space
 from livelag.bench.wishes import SERIES_SWITCHED
 
@@ -28,13 +28,13 @@ class _Choices:
 
     resistor: Indices
     capacitor: Indices
-    error: Floats
+    squares: Floats
     bound: Floats
 
     def within(self, threshold: float) -> _Choices:
         count = int(np.searchsorted(self.bound, threshold + SLACK, "right"))
         return _Choices(
-            self.resistor[:count], self.capacitor[:count], self.error[:count], self.bound[:count]
+            self.resistor[:count], self.capacitor[:count], self.squares[:count], self.bound[:count]
         )
 
 
@@ -44,10 +44,10 @@ class _Joined:
 
     resistors: Indices
     capacitors: Indices
-    error: Floats
+    squares: Floats
 
     def keep(self, which: NDArray[np.bool_] | slice) -> _Joined:
-        return _Joined(self.resistors[which], self.capacitors[which], self.error[which])
+        return _Joined(self.resistors[which], self.capacitors[which], self.squares[which])
 
 
 def search_switched(space: Space, count: int) -> Best:
@@ -58,7 +58,7 @@ def search_switched(space: Space, count: int) -> Best:
         if not np.isfinite(bounds[pot]) or bounds[pot] > best.threshold + SLACK:
             break
         slowest, *rest = _choices(space, pot, best.threshold)
-        begun = _Joined(slowest.resistor[:, None], slowest.capacitor[:, None], slowest.error)
+        begun = _Joined(slowest.resistor[:, None], slowest.capacitor[:, None], slowest.squares)
         for stages in _stages(space, pot, begun, rest, best):
             _add(space, pot, stages, best)
     return best
@@ -80,53 +80,72 @@ def _add(space: Space, pot: int, stages: _Joined, best: Best) -> None:
         candidate = space.candidate(
             SERIES_SWITCHED, tuple(resistors[::-1]), pot, tuple(capacitors[::-1])
         )
-        if candidate.error_log <= space.limit:
+        if candidate.worst_log <= space.limit:
             best.add(candidate)
 
 
 def _choices(space: Space, pot: int, threshold: float) -> list[_Choices]:
     """Choices for each range that can score the threshold or less, slowest range first."""
     found = []
-    for errors, bounds in _bounds(space, pot):
+    for squares, bounds in _bounds(space, pot):
         resistor, capacitor = np.nonzero((bounds <= threshold + SLACK) & np.isfinite(bounds))
         order = np.argsort(bounds[resistor, capacitor], kind="stable")
         resistor, capacitor = resistor[order], capacitor[order]
         found.append(
-            _Choices(resistor, capacitor, errors[resistor, capacitor], bounds[resistor, capacitor])
+            _Choices(resistor, capacitor, squares[resistor, capacitor], bounds[resistor, capacitor])
         )
     return found
 
 
 def _bounds(space: Space, pot: int) -> Iterator[tuple[Floats, Floats]]:
-    """(resistors, capacitors) error, and least score of a stage that has it, slowest range first.
+    """(resistors, capacitors) sum of squares and least score of a stage that has it, slowest first.
 
-    The score is infinite where the error is more than the limit.
+    The score is infinite where an error is more than the limit.
     """
     ranges = space.wishes.ranges
     track = space.ohms[:, None] + space.pot_track[pot]
     tuning = space.scoring.tuning_cents(track, space.leaks[None, :]) / TUNING_CENTS_PER_POINT
     drive = space.scoring.drive_points(space.ohms + space.pot_end[pot])[:, None]
     fixed = drive + space.scoring.part_points(2 * ranges + 1)
+    slowest, near = _squares(space, pot, ranges - 1)
+    own = space.error_points(slowest) + tuning
+    least = _Least(space.error_points(slowest[near]), tuning[near]) if near.any() else None
     for k in reversed(range(ranges)):
-        errors = _errors(space, pot, k)
-        far = errors > space.limit + SLACK
-        if k == ranges - 1:
-            own = tuning
-            least_tuning = float(np.where(far, np.inf, tuning).min())
-        else:
-            own = least_tuning
-        bounds = errors / LOG_ERROR_PER_POINT + fixed + own
-        bounds[far] = np.inf
-        yield errors, bounds
+        squares, allowed = (slowest, near) if k == ranges - 1 else _squares(space, pot, k)
+        bounds = np.full_like(squares, np.inf)
+        if least is not None:
+            points = space.error_points(squares[allowed])
+            points = own[allowed] if k == ranges - 1 else least.points(points)
+            bounds[allowed] = points + np.broadcast_to(fixed, squares.shape)[allowed]
+        yield squares, bounds
 
 
-def _errors(space: Space, pot: int, k: int) -> Floats:
-    """(resistors, capacitors) error of range k."""
+class _Least:
+    """The least points that E and T can cost together, over all choices for the slowest range."""
+
+    def __init__(self, error_points: Floats, tuning_points: Floats) -> None:
+        order = np.argsort(error_points)
+        self._errors = error_points[order]
+        both = self._errors + tuning_points[order]
+        # E is no less than what either range alone makes it.
+        self._up_to = np.concatenate([[np.inf], np.minimum.accumulate(tuning_points[order])])
+        self._beyond = np.concatenate([np.minimum.accumulate(both[::-1])[::-1], [np.inf]])
+
+    def points(self, error_points: Floats) -> Floats:
+        """Least points where another range alone makes E cost so much."""
+        place = np.searchsorted(self._errors, error_points, "right")
+        least: Floats = np.minimum(error_points + self._up_to[place], self._beyond[place])
+        return least
+
+
+def _squares(space: Space, pot: int, k: int) -> tuple[Floats, NDArray[np.bool_]]:
+    """(resistors, capacitors) sums of squares of range k, and whether it is near enough."""
     centres, halves = space.centres(
         k, space.ohms + space.pot_low[pot], space.ohms + space.pot_high[pot]
     )
-    errors: Floats = np.abs(np.log(space.farads) - centres[:, None]) + halves[:, None]
-    return errors
+    away = np.abs(np.log(space.farads) - centres[:, None])
+    squares: Floats = away**2 + halves[:, None] ** 2
+    return squares, away + halves[:, None] <= space.limit + SLACK
 
 
 def _stages(
@@ -137,9 +156,9 @@ def _stages(
         yield begun
         return
     start = 0
-    while start < len(begun.error):
+    while start < len(begun.squares):
         faster = rest[0].within(best.threshold)
-        step = max(1, _BATCH // max(1, len(faster.error)))
+        step = max(1, _BATCH // max(1, len(faster.squares)))
         part = begun.keep(slice(start, start + step))
         part = part.keep(_scores(space, pot, part) <= best.threshold + SLACK)
         start += step
@@ -147,17 +166,17 @@ def _stages(
         joined = joined.keep(_scores(space, pot, joined) <= best.threshold + SLACK)
         if len(rest) == 1:  # all resistors alike need no switch
             joined = joined.keep((joined.resistors != joined.resistors[:, :1]).any(axis=1))
-        if len(joined.error):
+        if len(joined.squares):
             yield from _stages(space, pot, joined, rest[1:], best)
 
 
 def _extend(space: Space, begun: _Joined, faster: _Choices) -> _Joined:
     """Each beginning with each choice of the next range, as far as there are parts."""
-    count, more = len(begun.error), len(faster.error)
+    count, more = len(begun.squares), len(faster.squares)
     joined = _Joined(
         _product(begun.resistors, faster.resistor),
         _product(begun.capacitors, faster.capacitor),
-        np.maximum(np.repeat(begun.error, more), np.tile(faster.error, count)),
+        np.repeat(begun.squares, more) + np.tile(faster.squares, count),
     )
     joined = joined.keep(_enough(joined.resistors, [lot.quantity for lot in space.resistors]))
     return joined.keep(_enough(joined.capacitors, [lot.quantity for lot in space.capacitors]))
@@ -175,7 +194,7 @@ def _scores(space: Space, pot: int, joined: _Joined) -> Floats:
     tuning = scoring.tuning_cents(slowest, space.leaks[joined.capacitors[:, 0]])
     least = space.ohms[joined.resistors].min(axis=1) + space.pot_end[pot]
     scores: Floats = (
-        joined.error / LOG_ERROR_PER_POINT
+        space.error_points(joined.squares)
         + tuning / TUNING_CENTS_PER_POINT
         + scoring.drive_points(least)
         + scoring.part_points(2 * space.wishes.ranges + 1)

@@ -28,7 +28,7 @@ ONE_POT_RATIO = (ADDED, EXCHANGED)  # one series resistor: every range has the s
 # 0.8 x 0.9 / 1.1 x 1.5 is nearly 1.
 DEFAULT_OVERLAP = 1.5
 DEFAULT_WITHIN = 0.25
-MOST_WITHIN = 9.0
+MOST_WITHIN = 3.0
 MOST_RANGES = 3
 RANGE_NAMES = {1: ("all",), 2: ("fast", "slow"), 3: ("fast", "middle", "slow")}
 SHORTEST, LONGEST = "shortest", "longest"

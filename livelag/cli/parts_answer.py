@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
 from typing import Any
 
@@ -110,6 +111,7 @@ def _candidate(number: int, one: Candidate, stage: GlideStage) -> dict[str, Any]
             for name, (low, high), ohms in _each_range(one)
         ],
         "worst_error_fraction": one.worst_error_fraction,
+        "rms_error_fraction": math.expm1(one.rms_log),
         "errors": [
             {
                 "range": row.range_name,

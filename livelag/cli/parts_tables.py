@@ -21,19 +21,22 @@ WIDE = 105  # columns of a terminal that shows all there is to a choice
 NEAR_ENOUGH = 0.01  # an error of one pot that is lost among those of real values
 
 
+_LEGEND = (
+    "Time constants. The best of {:,} combinations, proven: what was left out unseen cannot score "
+    "less. Score, less is better: a point for 5 % of time (root mean square over all ends; the "
+    "error shown is the worst), a cent of tuning (insulation over an octave and bias at its limit, "
+    "slowest setting), a part more, and each 5 mA beyond 5 that the driving buffer peaks at on a "
+    "leap of five octaves. A star: no other choice is better in one of these and worse in none."
+)
+
+
 def show_parts(
     wishes: Wishes, result: PartsResult, stage: GlideStage, choice: int, written: dict[str, str]
 ) -> None:
     """Print what was found, what the choice is, and what to do with it."""
     out = console()
     out.print(_candidates_table(wishes, result.candidates))
-    out.print(
-        f"Time constants. The best of {result.combinations:,} combinations, proven: what was left "
-        "out unseen cannot score less. Score, less is better: a point for 5 % of time, a cent of "
-        "tuning (insulation over an octave and bias at its limit, slowest setting), a part more, "
-        "and each 5 mA beyond 5 that the driving buffer peaks at on a leap of five octaves. A "
-        "star: no other choice is better in one of these and worse in none."
-    )
+    out.print(_LEGEND.format(result.combinations))
     chosen = result.candidates[choice - 1]
     built = choice_spread(stage)
     out.print(_choice_table(chosen, built, choice))

@@ -48,16 +48,18 @@ def judge(connection, ohms, pot, chosen, targets, surroundings):
     """Score and worst logarithmic error of one choice."""
     per_octave, divider, bias, leap = surroundings
     each = ohms if len(ohms) == len(targets) else ohms * len(targets)
-    worst = 0.0
+    errors = []
     for number, (shortest, longest) in enumerate(targets):
         farads = chosen[number][0]
         if connection == "added":
             farads = sum(lot[0] for lot in chosen[: number + 1])
-        worst = max(worst, abs(log(each[number] * farads / shortest)))
-        worst = max(worst, abs(log((each[number] + pot) * farads / longest)))
+        errors.append(log(each[number] * farads / shortest))
+        errors.append(log((each[number] + pot) * farads / longest))
+    rms = (sum(error * error for error in errors) / len(errors)) ** 0.5
     slowest = chosen if connection == "added" else [chosen[-1]]
     drop = (each[-1] + pot) * sum(farads / INSULATION_S[kind] for farads, kind, _ in slowest)
     tuning = divider * (1200.0 * drop + 1200.0 * bias * (each[-1] + pot) / per_octave) / (1 + drop)
     extra_parts = len(ohms) + 1 + len(chosen) - (len(targets) + 2)
     current = leap / min(each)
-    return worst / log(1.05) + tuning + extra_parts + max(0.0, current / 0.005 - 1.0), worst
+    score = rms / log(1.05) + tuning + extra_parts + max(0.0, current / 0.005 - 1.0)
+    return score, max(abs(error) for error in errors)
