@@ -16,6 +16,7 @@ from livelag.bench.search_switched import search_switched
 from livelag.bench.stock import Pool
 from livelag.bench.wishes import (
     LONGEST,
+    MOST_WITHIN,
     ONE_POT_RATIO,
     SERIES_SWITCHED,
     SHORTEST,
@@ -30,7 +31,7 @@ from livelag.units import format_value
 
 MOST_CANDIDATES = 100
 DEFAULT_CANDIDATES = 8
-_MOST_OFFERED = 4.0  # a larger factor is not worth being offered
+_MOST_OFFERED = 1.0 + MOST_WITHIN - 0.01  # a larger factor could not be asked for
 _WIDENING = (1.0, 2.0, 4.0, 8.0, 16.0, 64.0)  # ln of the factor looked in for the nearest
 
 

@@ -41,7 +41,6 @@ def parts_answer(
             ],
         },
         "combinations": result.combinations,
-        "proven_best": True,
         "topologies": [
             {
                 "topology": name,

@@ -17,16 +17,16 @@ from livelag.cli.extras import show_written
 from livelag.cli.parts_answer import BUILDS, FITS, choice_spread, least_error
 from livelag.units import format_value
 
-WIDE = 105  # columns of a terminal that shows all there is to a choice
+WIDE = 114  # columns of a terminal that shows all there is to a choice
 NEAR_ENOUGH = 0.01  # an error of one pot that is lost among those of real values
 
 
 _LEGEND = (
     "Time constants. The best of {:,} combinations, proven: what was left out unseen cannot score "
-    "less. Score, less is better: a point for 5 % of time (root mean square over all ends; the "
-    "error shown is the worst), a cent of tuning (insulation over an octave and bias at its limit, "
-    "slowest setting), a part more, and each 5 mA beyond 5 that the driving buffer peaks at on a "
-    "leap of five octaves. A star: no other choice is better in one of these and worse in none."
+    "less. A point of score, less is better: 5 % of time (root mean square over all ends; shown is "
+    "the worst), a cent of tuning at the slowest setting (insulation over an octave, bias at its "
+    "limit), a part more, 5 mA of drive beyond 5 at the peak of a five-octave leap. Star: whatever "
+    "is better in one of these is worse in another."
 )
 
 
@@ -63,10 +63,9 @@ def show_parts(
 
 
 def _candidates_table(wishes: Wishes, candidates: Sequence[Candidate]) -> Table:
-    columns = ["choice", "series", "pot", "C", "connection", "shortest", "longest", "error"]
     wide = console().width >= WIDE
-    if wide:
-        columns += ["tuning", "drive", "score"]
+    columns = ["choice", "series", "pot", "capacitors" if wide else "C", "connection"]
+    columns += ["shortest", "longest", "error", *(("tuning", "drive", "score") if wide else ())]
     right = [name for name in columns if name != "connection"]
     table = new_table(*columns, title=_title(wishes), right=right)
     for number, one in enumerate(candidates, start=1):

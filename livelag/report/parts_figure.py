@@ -29,7 +29,9 @@ def parts_figure(wishes: Wishes, candidates: Sequence[Candidate]) -> Figure:
         _draw_range(axes, wishes, candidates, index, name)
     for seconds in wishes.times_s:
         axes.axvline(seconds, color="0.35", linewidth=1.0, linestyle=(0, (4, 2)), zorder=0)
+    ends = [end for one in candidates for times in (*one.ranges_s, wishes.times_s) for end in times]
     axes.set_xscale("log")
+    axes.set_xlim(min(ends) / 1.4, max(ends) * 1.4)
     axes.set_ylim(len(candidates) - 0.5, -0.5)
     axes.set_yticks(range(len(candidates)), [_label(n, one) for n, one in enumerate(candidates, 1)])
     axes.tick_params(axis="y", length=0)

@@ -4,6 +4,7 @@ import csv
 import json
 
 import pytest
+from rich.console import Console
 
 from livelag.bench.marks import Marks
 from livelag.circuit.presets import load_stage
@@ -116,6 +117,16 @@ def test_tables_explain_themselves(parts):
     assert handover.split() == ["handover", "30", "ms", "69.3", "ms", "none"]
     assert "builds have a gap" in ended.out
     assert max(len(line.rstrip()) for line in ended.out.splitlines()) <= 120
+
+
+def test_tables_fit_a_narrow_terminal(parts, monkeypatch):
+    monkeypatch.setattr("livelag.cli.parts_tables.console", lambda: Console(width=80, markup=False))
+    ended = parts("--shortest", "2ms", "--handover", "30ms,300ms", "--longest", "2.4s")
+    lines = [line.rstrip() for line in ended.out.splitlines()]
+    assert max(map(len, lines)) <= 80
+    assert "…" not in ended.out
+    header = next(line.split() for line in lines if line.startswith(" choice"))
+    assert header[-3:] == ["shortest", "longest", "error"]
 
 
 def test_one_range_and_three(answer, parts):
