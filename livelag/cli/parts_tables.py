@@ -75,7 +75,7 @@ def _candidates_table(wishes: Wishes, candidates: Sequence[Candidate]) -> Table:
             "\n".join(format_value(part.resistance_ohms, "Ω") for part in one.series),
             format_value(one.pot.resistance_ohms, "Ω"),
             "\n".join(format_value(part.capacitance_f, "F") for part in one.capacitors),
-            one.connection,
+            one.connection if wide else one.connection.replace("-", "-\n"),
             "\n".join(seconds(shortest) for shortest, _ in one.ranges_s),
             "\n".join(seconds(longest) for _, longest in one.ranges_s),
             _percent(one.worst.error_fraction),
