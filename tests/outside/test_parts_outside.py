@@ -12,14 +12,14 @@ from livelag.bench.wishes import Wishes
 from livelag.circuit.presets import load_stage
 from livelag.cli.main import run
 
-# IEC 60063, the table of E3 to E24 as printed: two significant digits.
+# The tables of IEC 60063, digits from memory; the sums and departures below are from the print.
 E24 = "10 11 12 13 15 16 18 20 22 24 27 30 33 36 39 43 47 51 56 62 68 75 82 91"
 PRINTED = {
     "E3": "10 22 47",
     "E6": "10 15 22 33 47 68",
     "E12": "10 12 15 18 22 27 33 39 47 56 68 82",
     "E24": E24,
-    # IEC 60063, the table of E96: three significant digits.
+    # Three significant digits.
     "E96": """
     100 102 105 107 110 113 115 118 121 124 127 130 133 137 140 143 147 150 154 158 162 165 169 174
     178 182 187 191 196 200 205 210 215 221 226 232 237 243 249 255 261 267 274 280 287 294 301 309
