@@ -25,6 +25,7 @@ COMMANDS = (
     "arrival",
     "tuning",
     "spread",
+    "parts",
     "sheet",
     "presets",
     "devices",

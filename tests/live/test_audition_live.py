@@ -298,7 +298,6 @@ def test_a_take_is_valid_after(jack_server, audition, tmp_path, how):
 
 
 def test_marks_by_ear_become_a_file(jack_server, audition, tmp_path):
-    pytest.importorskip("livelag.bench.marks")
     server = jack_server()
     playing = audition(server, "two-range-film", "--by-ear", "--rotation", 0.2, midi=False)
     for keys in ("f", ">>", "h", ">>>", "s"):
