@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from livelag.bench.capture import Capture
 from livelag.bench.fit_response import lag_at_samples
-from livelag.bench.fit_window import Trace, average, edges_of, new_trace, noise_v, part, step_v
+from livelag.bench.fit_window import Trace, average, edges_of, new_trace, noise_v, part
 from livelag.errors import InputError, UnknownNameError
 
 Vector = NDArray[np.float64]
@@ -97,7 +97,7 @@ def _moves(volts: Vector) -> bool:
     # The reach of noise alone over n samples grows as sqrt(2 ln n).
     reach = 2.0 * noise_v(volts) * (2.0 * np.log(len(volts))) ** 0.5
     middle = float(np.ptp(np.quantile(volts, (0.02, 0.98))))
-    return span > 1.6 * reach and middle > 0.0 and span > 3.5 * step_v(volts)
+    return span > 1.6 * reach and middle > 0.0
 
 
 def _check_moving(capture: Capture, moving: list[int], told: list[int | None]) -> None:

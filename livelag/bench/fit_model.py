@@ -10,7 +10,7 @@
 | g, b      | gain, offset        | of the output                                           | 1, V |
 | A, tau_m  | `Decays`            | one lag, or two with absorption                         | 1, s |
 | x         |                     | the glide that was still going on as the capture began  | V    |
-| d_k, h_k  |                     | where between two rows edge k of the input was, k > 1  | s    |
+| d_k, h_k  |                     | where between two rows edge k of the input was, k > 1   | s    |
 
 The linear ones are solved for at each step (variable projection: Golub and Pereyra 1973).
 """

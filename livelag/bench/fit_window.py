@@ -80,12 +80,17 @@ def noise_v(volts: Vector) -> float:
 
 
 def step_v(volts: Vector) -> float:
-    """Smallest difference between values of a channel; 0 if it takes too many to be steps."""
+    """Smallest difference between values of a channel; 0 if that is no converter's step.
+
+    Too many values are none of its steps, and too few, such as the two of a clean square wave, do
+    not show them.
+    """
     values = np.unique(volts)
-    if len(values) < 2 or len(values) > 4096 or len(values) > 0.7 * len(volts):
+    if len(values) < 8 or len(values) > 4096 or len(values) > 0.7 * len(volts):
         return 0.0
     gaps = np.diff(values)
-    return float(gaps[gaps > 1e-6 * np.ptp(values)].min(initial=np.ptp(values)))
+    step = float(gaps[gaps > 1e-6 * np.ptp(values)].min(initial=np.ptp(values)))
+    return step if step < 0.05 * np.ptp(values) else 0.0
 
 
 def flicker(volts: Vector) -> float:
@@ -135,6 +140,8 @@ def new_trace(times_s: Vector, input_v: Vector, output_v: Vector) -> Trace:
         # Noise of some half a step and more makes the steps part of the noise.
         still = step > 0.0 and noise_v(volts) < 0.5 * step
         steps.append(step if still else 0.0)
+    if noise_v(input_v) == 0.0 and not steps[0]:
+        steps[0] = steps[1]  # a clean input of a few levels: steps like those of the output
     usable: Mask = ~clipped(output_v, smooth=True)
     return Trace(times_s, input_v, output_v, usable, noise_v(input_v), steps[0], steps[1])
 

@@ -25,6 +25,7 @@ COMMANDS = (
     "arrival",
     "tuning",
     "spread",
+    "fit",
     "presets",
     "devices",
 )
