@@ -3,7 +3,7 @@
 The measured input drives the model (`livelag.bench.fit_model`), so neither the generator's edge nor
 its levels need to be known. Intervals (`livelag.bench.fit_noise`) hold 95 %. A second time constant
 is added where dielectric absorption shows: where it lowers the Bayesian information criterion
-(Schwarz 1978) by more than 10 and its share is more than 4 standard deviations above 0.
+(Schwarz 1978) by more than 10, with rows counted for less where the residual hangs together.
 """
 
 from __future__ import annotations
@@ -18,15 +18,13 @@ from numpy.typing import NDArray
 from livelag.bench.capture_roles import Roles
 from livelag.bench.fit_checks import check_capture, check_fit
 from livelag.bench.fit_model import Model, Solution
-from livelag.bench.fit_noise import covariance
+from livelag.bench.fit_noise import Spread, spread_of
 from livelag.bench.fit_window import Trace, thinned
 from livelag.circuit.kinds import Absorption
 
 Vector = NDArray[np.float64]
-Matrix = NDArray[np.float64]
 
 CLEARLY_LOWER = 10.0
-CLEARLY_THERE = 4.0
 _LARGEST_SHARE = 0.5
 
 
@@ -118,13 +116,13 @@ def fit_capture(
     plain = search.plain
     with_soak, change = search.absorption()
     chosen = plain if with_soak is None else with_soak
-    covered, excess = covariance(trace, chosen)
-    answer = _answer(name, roles, model, chosen, covered, excess, expected_absorption, change)
+    spread = spread_of(trace, chosen)
+    answer = _answer(name, roles, model, chosen, spread, expected_absorption, change)
     check_fit(name, roles, trace, answer.time_constant_s.value, answer.time_constant_s.u95,
               answer.residual_v[trace.usable], len(model.edges))  # fmt: skip
     if trace.averaged > 1:
         said.append(f"samples are averaged in groups of {trace.averaged}")
-    if excess > 2.0:
+    if spread.excess > 2.0:
         said.append(
             "the residual hangs together more than noise does; the intervals are wider for it"
         )
@@ -169,10 +167,9 @@ class _Search:
         rows = len(plain.residual_v)
         before, after = (float(np.sum(s.residual_v**2)) for s in (plain, found))
         extra = found.jacobian.shape[1] - plain.jacobian.shape[1]
-        change = rows * math.log(after / before) + extra * math.log(rows)
-        spread = covariance(self.model.trace, found)[0]
-        clear = found.shape[2] > CLEARLY_THERE * math.sqrt(max(spread[2, 2], 0.0))
-        return (found if change < -CLEARLY_LOWER and clear else None), change
+        telling = rows / spread_of(self.model.trace, found).colour
+        change = telling * math.log(after / before) + extra * math.log(rows)
+        return (found if change < -CLEARLY_LOWER else None), change
 
     def _hint(self) -> float | None:
         """The absorption time that the residual of one lag speaks for most; None if none does."""
@@ -202,14 +199,13 @@ def _answer(
     roles: Roles,
     model: Model,
     found: Solution,
-    spread: Matrix,
-    excess: float,
+    spread: Spread,
     expected: tuple[Absorption, ...],
     change: float | None,
 ) -> CaptureFit:
     rows, count = found.jacobian.shape
     times = _quantile(rows - count)
-    u95 = times * np.sqrt(np.maximum(np.diag(spread), 0.0))
+    u95 = times * np.sqrt(np.maximum(np.diag(spread.covariance), 0.0))
     first_linear = len(found.shape)
     tau = float(np.exp(found.shape[0]))
     fraction = time = None
@@ -219,8 +215,9 @@ def _answer(
         time = Measured(soak_s, soak_s * float(u95[3]))
     hidden = _hidden_share(tau, expected, None if time is None else time.value)
     relative = math.hypot(float(u95[0]), 1.96 * hidden)
-    # Where between two samples an edge was is part of the delay: uniform over the interval.
-    unseen = 1.96 * model.trace.interval_s / math.sqrt(12.0 * max(len(model.edges), 1))
+    # Where between two rows the first edge was is part of the delay: uniform over the interval,
+    # whose ends jitter.
+    unseen = 1.96 * math.sqrt(model.trace.interval_s**2 / 12.0 + spread.jitter_s**2)
     rise = found.decays.rise_s()
     return CaptureFit(
         name=name,
@@ -236,7 +233,7 @@ def _answer(
         criterion_change=change,
         noise_v=float(np.sqrt(np.sum(found.residual_v**2) / max(rows - count, 1))),
         steps=len(model.edges),
-        excess=excess,
+        excess=spread.excess,
         trace=model.trace,
         fitted_v=found.fitted_v,
         notes=(),

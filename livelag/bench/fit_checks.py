@@ -26,7 +26,7 @@ def check_capture(name: str, roles: Roles) -> list[str]:
     trace = roles.trace
     cut = clipped(trace.input_v, smooth=False)
     if cut.any():
-        top = float(trace.input_v[np.flatnonzero(cut)[0]])
+        top = float(np.median(trace.input_v[cut]))
         raise InputError(
             f"{name}: the input {roles.input_name!r} is clipped at {top:.4g} V, so what drove the "
             "glide is not known; capture again with more volts per division"
@@ -34,7 +34,7 @@ def check_capture(name: str, roles: Roles) -> list[str]:
     lost = float(np.mean(~trace.usable))
     if not lost:
         return []
-    top = float(trace.output_v[np.flatnonzero(~trace.usable)[0]])
+    top = float(np.median(trace.output_v[~trace.usable]))
     if lost > 0.8:
         raise InputError(
             f"{name}: the output {roles.output_name!r} is clipped at {top:.4g} V for "

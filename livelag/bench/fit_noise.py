@@ -16,6 +16,8 @@ statistics.
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -27,16 +29,31 @@ Vector = NDArray[np.float64]
 Matrix = NDArray[np.float64]
 
 
-def covariance(trace: Trace, solution: Solution) -> tuple[Matrix, float]:
-    """Covariance (parameters, parameters), and by how much the residual was more than noise.
+@dataclass(frozen=True)
+class Spread:
+    """How sure a fit is.
+
+    Attributes:
+        covariance: (parameters, parameters).
+        excess: factor of variance by which the residual hangs together more than its noise
+            explains; 1 if it does not.
+        colour: variance that the residual has over long stretches over that of single rows, 1 for
+            white noise.
+        jitter_s: standard deviation of the instants of the rows, 0 if it does not show.
+    """
+
+    covariance: Matrix
+    excess: float
+    colour: float
+    jitter_s: float
+
+
+def spread_of(trace: Trace, solution: Solution) -> Spread:
+    """How sure a fit is, eq. 1.
 
     Args:
         trace: what was fitted.
         solution: the fit.
-
-    Returns:
-        The covariance, and the factor of variance that a residual which hangs together adds; 1 if
-        it does not.
     """
     use = trace.usable
     J, residual = solution.jacobian, solution.residual_v
@@ -47,7 +64,7 @@ def covariance(trace: Trace, solution: Solution) -> tuple[Matrix, float]:
     bread = np.linalg.pinv(unit.T @ unit, rcond=1e-14, hermitian=True)
     slope = np.gradient(solution.fitted_v, trace.times_s)[use]
     freedom = rows / max(rows - count, 1)
-    variance = _white(residual**2 * freedom, slope**2)
+    variance, jitter_s = _white(residual**2 * freedom, slope**2)
     meat = (unit * variance[:, None]).T @ unit
     gain = float(solution.linear[0])
     smoothed = _backwards(trace, solution, unit)
@@ -60,26 +77,31 @@ def covariance(trace: Trace, solution: Solution) -> tuple[Matrix, float]:
         if step:
             sums = np.add.reduceat(weights, _run_starts(values), axis=0)
             meat += step**2 / 12.0 * sums.T @ sums
-    excess = _excess(trace, solution, residual, float(variance.mean()), through)
+    # A run of one value adds up by itself; that is in the covariance already.
+    still = trace.output_step_v**2 / 12.0 * _mean_run(trace.output_v) if trace.output_step_v else 0
+    white = float(variance.mean())
+    expected = white + through + still
+    excess = _excess(trace, solution, residual, expected)
     answer: Matrix = bread @ meat @ bread * excess / np.outer(scale, scale)
-    return answer, excess
+    return Spread(answer, excess, excess * expected / white if white > 0.0 else 1.0, jitter_s)
 
 
-def _white(squares: Vector, slopes: Vector) -> Vector:
-    """Variance a + b slope^2 of each row, both 0 or more, fitted to squared residuals."""
+def _white(squares: Vector, slopes: Vector) -> tuple[Vector, float]:
+    """Variance a + b slope^2 of each row, fitted to squared residuals, and the root of b."""
     from scipy.optimize import nnls
 
     steepest = float(slopes.max())
     if steepest <= 0.0:
-        return np.full_like(squares, squares.mean())
+        return np.full_like(squares, squares.mean()), 0.0
     design = np.column_stack([np.ones_like(slopes), slopes / steepest])
     # Squares scatter by twice their size squared: weigh them by a first idea of it.
     found = nnls(design, squares)[0]
     weight = 1.0 / np.maximum(design @ found, 0.05 * squares.mean() + 1e-300)
     found = nnls(design * weight[:, None], squares * weight)[0]
     modelled: Vector = design @ found
-    # The mean of the squares is known better than how they are spread.
-    return modelled * (squares.mean() / modelled.mean()) if modelled.mean() > 0 else modelled
+    if modelled.mean() > 0.0:  # the mean of the squares is known better than how they are spread
+        modelled *= squares.mean() / modelled.mean()
+    return modelled, float(np.sqrt(found[1] / steepest))
 
 
 def _backwards(trace: Trace, solution: Solution, weights: Matrix) -> Matrix:
@@ -102,16 +124,12 @@ def _run_starts(values: Vector) -> NDArray[np.int64]:
     return np.asarray(starts, dtype=np.int64)
 
 
-def _excess(
-    trace: Trace, solution: Solution, residual: Vector, variance: float, through: float
-) -> float:
+def _excess(trace: Trace, solution: Solution, residual: Vector, expected: float) -> float:
     """How much more than expected the residual adds up over stretches; 1 unless clearly more."""
     rows = len(residual)
-    if variance <= 0.0:
+    if expected <= 0.0:
         return 1.0
     tau_rows = solution.decays.times_s[0] / trace.interval_s
-    # A run of one value adds up by itself; that is in the covariance already.
-    still = trace.output_step_v**2 / 12.0 * _mean_run(trace.output_v) if trace.output_step_v else 0
     worst = 1.0
     for length in {4, round(tau_rows / 4.0), round(tau_rows)}:
         blocks = rows // max(length, 1)
@@ -119,7 +137,7 @@ def _excess(
             continue
         sums = residual[: blocks * length].reshape(blocks, length).sum(axis=1)
         seen = float(np.mean(sums**2)) / length
-        ratio = seen / (variance + through + still)
+        ratio = seen / expected
         if ratio > 1.0 + 5.0 * (2.0 / blocks) ** 0.5:
             worst = max(worst, ratio)
     return worst

@@ -13,6 +13,7 @@ Mask = NDArray[np.bool_]
 MOST_SAMPLES = 20_000
 MOST_EDGES = 24
 FLICKER = 0.15  # share of samples that turn back, above which a channel is noisy
+_SAME_EDGE_ROWS = 8  # a slow edge may rest for a few rows
 LONG_RUN = 60  # samples alike that a noisy channel does not show by itself
 
 
@@ -115,13 +116,25 @@ def clipped(volts: Vector, smooth: bool) -> Mask:
         away = volts[~at]
         if len(away) < 16 or length < 8:
             continue
-        turning = flicker(volts[~at])
-        if turning > FLICKER:
+        turning, step = flicker(away), step_v(volts)
+        # On a steep slope noise seldom turns a channel back, but there it bends it.
+        if turning > FLICKER or 0.0 < 0.6 * step < noise_v(away):
             if length >= LONG_RUN:
-                cut |= at
+                cut |= _closed(at)
         elif smooth and turning < 0.01 and _meets_at_speed(volts, int(starts[longest]), length):
             cut |= at
     return cut
+
+
+def _closed(at: Mask) -> Mask:
+    """The same samples, with short gaps between and some on either side.
+
+    Near a ceiling the noise decides which samples reach it; to keep the others would be a choice.
+    """
+    reach = LONG_RUN // 2
+    near = np.convolve(at.astype(np.float64), np.ones(2 * reach + 1), mode="same") > 0.5
+    closed: Mask = np.asarray(near, dtype=bool)
+    return closed
 
 
 def _meets_at_speed(volts: Vector, start: int, length: int) -> bool:
@@ -152,7 +165,9 @@ def edges_of(trace: Trace) -> tuple[Edge, ...]:
     limit = max(8.0 * trace.input_noise_v, 0.05 * float(np.ptp(trace.input_v)))
     rows = np.flatnonzero(np.abs(moves) > limit)
     found = []
-    for group in np.split(rows, np.flatnonzero(np.diff(rows) > 2) + 1):
+    signs = np.sign(moves[rows])
+    apart = (np.diff(rows) > _SAME_EDGE_ROWS) | (np.diff(signs) != 0)
+    for group in np.split(rows, np.flatnonzero(apart) + 1):
         if len(group):
             first, last = int(group[0]), int(group[-1]) + 1
             middle = (trace.times_s[first] + trace.times_s[last]) / 2.0
