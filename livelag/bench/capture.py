@@ -62,11 +62,11 @@ def read_capture(
     stated_s = interval_s if interval_s is not None else sample_interval_s(layout)
     rows = read_numbers(path, layout, progress)
     notes: list[str] = []
+    if len(columns) > 1 and not np.isfinite(rows[:, 1:]).any():
+        raise InputError(f"{path}: no channel holds a number, only NaN or blanks; {EXPECTED}")
     time_at = _time_column(path, columns, rows, stated_s, interval_s is not None)
     channels = [i for i in range(len(columns)) if i != time_at and not _is_counter(rows[:, i])]
     alive = [i for i in channels if np.isfinite(rows[:, i]).any()]
-    if channels and not alive:
-        raise InputError(f"{path}: no channel holds a number, only NaN or blanks; {EXPECTED}")
     for i in channels:
         if i not in alive:
             notes.append(f"{columns[i].name!r} holds no number and is left out")

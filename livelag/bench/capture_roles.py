@@ -6,6 +6,7 @@ edge would have to follow from a slow curve, which no lag can do.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from itertools import permutations
 
@@ -19,7 +20,9 @@ from livelag.errors import InputError, UnknownNameError
 
 Vector = NDArray[np.float64]
 _ROUGH_ROWS = 4000
-_CLEAR = 0.5  # the right way round leaves less than this share of what the wrong way leaves
+# The right way round leaves much less than the wrong way, or so clearly less that it is no chance:
+# twice the logarithm of the likelihood ratio under white noise.
+_MUCH, _NO_CHANCE = 2.0, 30.0
 
 
 @dataclass(frozen=True)
@@ -72,7 +75,9 @@ def find_roles(
     left, rough_s, a, b = tried[0]
     trace = new_trace(capture.times_s, capture.volts[a], capture.volts[b])
     swapped = next((row[0] for row in tried if row[2:] == (b, a)), None)
-    if len(tried) > 1 and tried[1][0] * _CLEAR < left and None in told:
+    ratio = tried[1][0] / max(left, 1e-300) if len(tried) > 1 else math.inf
+    rows = min(len(trace.times_s), _ROUGH_ROWS)
+    if None in told and ratio < _MUCH and rows * math.log(ratio) < _NO_CHANCE:
         reason = "move alike" if swapped == tried[1][0] else "fit one another equally well"
         one, other = tried[0][2:], tried[1][2:]
         names = sorted({repr(capture.channel_names[i]) for i in (*one, *other)})
@@ -142,7 +147,7 @@ def _rough(capture: Capture, a: int, b: int) -> tuple[float, float]:
 def _best_rung(trace: Trace) -> tuple[float, float]:
     t, u, v = trace.times_s, trace.input_v, trace.output_v
     span = float(t[-1] - t[0])
-    rungs = np.geomspace(trace.interval_s / 2.0, 4.0 * span, 40)
+    rungs = np.geomspace(trace.interval_s / 2.0, 4.0 * span, 24)
     total = float(np.sum((v - v.mean()) ** 2)) or 1.0
     left = []
     for tau in rungs.tolist():

@@ -118,9 +118,9 @@ class Model:
             np.clip(start, low, high) / steps,
             jac=lambda scaled: self._slopes(scaled * steps, steps),
             bounds=(low / steps, high / steps),
-            xtol=1e-10,
-            ftol=1e-12,
-            gtol=1e-14,
+            xtol=1e-8,
+            ftol=1e-11,
+            gtol=1e-12,
             max_nfev=60,
         )
         return self.at(np.asarray(found.x) * steps, steps)

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 from rich.console import Console
 from rich.table import Table
 
 from livelag.bench.fit import Measured
-from livelag.bench.fit_verdict import OPEN, OUTSIDE, Line
+from livelag.bench.fit_verdict import OPEN, OUTSIDE, WITHIN, Line
 from livelag.circuit.stage import GlideStage
 from livelag.cli.common import new_table
 from livelag.cli.fit_job import Found, Judged, PartLine
@@ -15,15 +17,23 @@ from livelag.units import format_value
 
 def show(out: Console, stage: GlideStage, found: Found, accuracy: float) -> None:
     """Show every capture, the parts if several tell them, and the verdict."""
+    if found.parts is not None:
+        out.print(stage.title)
+        out.print(_captures_table(found.captures))
+        out.print(
+            f"Time constants of each capture, with their limits. {_limits_explained(accuracy)}"
+        )
     for one in found.captures:
-        out.print(_heading(stage, one))
-        out.print(_capture_table(one))
-        out.print(_explained(one, accuracy))
+        if found.parts is None:
+            out.print(_heading(stage, one))
+            out.print(_capture_table(one))
+            out.print(_explained(one, accuracy))
+        name = "" if found.parts is None else f"{one.fit.name}: "
         for line in one.lines:
             if line.suspect:
-                out.print(f"{line.what}: {line.suspect}.")
+                out.print(f"{name}{line.what}: {line.suspect}.")
         for note in one.fit.notes:
-            out.print(f"note: {note}.")
+            out.print(f"note: {name}{note}.")
     if found.parts is not None:
         if found.part_lines:
             out.print(_parts_table(found.part_lines))
@@ -93,11 +103,41 @@ def _explained(one: Judged, accuracy: float) -> str:
             f"criterion by {-(fit.criterion_change or 0.0):.0f}."
         )
     if one.lines:
-        text += (
-            f"\nLimits are the worst that parts within their tolerances can do. Gain and offset "
-            f"allow for an oscilloscope good to {100 * accuracy:g} %."
-        )
+        text += f"\n{_limits_explained(accuracy)}"
     return text
+
+
+def _limits_explained(accuracy: float) -> str:
+    return (
+        "Limits are the worst that parts within their tolerances can do.\nGain and offset allow for "
+        f"an oscilloscope good to {100 * accuracy:g} %."
+    )
+
+
+def _captures_table(captures: tuple[Judged, ...]) -> Table:
+    numbers = ("rotation", "time constant", "95 %", "planned", "least", "most", "gain", "offset")
+    columns = ("capture", "range", *numbers, "verdict")
+    table = new_table(*columns, right=numbers)
+    for one in captures:
+        if one.setting is None:
+            continue
+        fit, line = one.fit, one.lines[0]
+        outside = [each.what for each in one.lines if each.verdict == OUTSIDE]
+        table.add_row(
+            Path(fit.name).name,
+            one.range_name,
+            f"{one.setting.rotation:g}",
+            format_value(fit.time_constant_s.value, "s", 4),
+            f"± {format_value(fit.time_constant_s.u95, 's', 2)}",
+            *(
+                format_value(value, "s", 3)
+                for value in (line.limits.nominal, line.limits.low, line.limits.high)
+            ),
+            f"{fit.gain.value:.3f}",
+            format_value(fit.offset_v.value, "V", 2),
+            f"outside: {', '.join(outside)}" if outside else WITHIN,
+        )
+    return table
 
 
 def _parts_table(lines: tuple[PartLine, ...]) -> Table:
