@@ -80,7 +80,7 @@ def read_capture(
     used = alive if time_at is None else [*alive, time_at]
     kept = np.isfinite(rows[:, used]).all(axis=1)
     if not kept.all():
-        notes.append(f"{int((~kept).sum()):,} rows with blanks or NaN are left out")
+        notes.append(f"rows with blanks or NaN are left out: {int((~kept).sum()):,}")
     if int(kept.sum()) < FEWEST_ROWS:
         raise InputError(
             f"{path}: holds {int(kept.sum())} whole rows of numbers; at least {FEWEST_ROWS} are "

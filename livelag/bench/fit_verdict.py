@@ -80,13 +80,26 @@ def verdict(
     return tuple(lines)
 
 
+def _other_range(stage: GlideStage, setting: Setting, time_constant_s: float) -> str:
+    """Name of another range that the time constant would be right for; empty if there is none."""
+    for index, name in enumerate(stage.range_names):
+        if index != setting.range_index:
+            limits = setting_limits(stage, Setting(index, setting.rotation))
+            if limits.shown_time_constant_s.holds(time_constant_s):
+                return name
+    return ""
+
+
 def _suspect(
     key: str, stage: GlideStage, setting: Setting, measured: Measured, limits: Limits
 ) -> str:
     high = measured.value > limits.high
     if key == "rise_s":
-        return "as the time constant"
+        return ""  # the time constant's line says it
     if key == "time_constant_s":
+        elsewhere = _other_range(stage, setting, measured.value)
+        if elsewhere:
+            return f"as of range {elsewhere!r} at this rotation; check how the range switch stood"
         position = stage.ranges[setting.range_index]
         parts = " + ".join(repr(name) for name in position.connects)
         series = (position.series or stage.series).resistance_ohms

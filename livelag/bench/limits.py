@@ -20,7 +20,7 @@ Absorption stays at its typical size: data sheets state no limit for it. Swing i
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -185,11 +185,21 @@ class WorstCase:
             to_v: volts in from time 0 on; both inside the swing.
             times_s: (times,) seconds, 0 or more; infinity is settled.
         """
-        offset = self._nominal_offset_v(setting)
-        nominal = offset + _step(self.stage, setting, from_v, to_v, times_s)
+        return self.band(setting, lambda stage: _step(stage, setting, from_v, to_v, times_s))
+
+    def band(
+        self, setting: Setting, volts: Callable[[GlideStage], Vector]
+    ) -> tuple[Vector, Vector, Vector]:
+        """Volts out as designed, least and greatest over all corners, each (times,).
+
+        Args:
+            setting: where the controls stand, not bypassed.
+            volts: a stage's volts out without offsets and bias, (times,).
+        """
+        nominal = volts(self.stage) + self._nominal_offset_v(setting)
         lowest, highest = nominal, nominal
         for corner in self.corners:
-            middle = _step(corner, setting, from_v, to_v, times_s)
+            middle = volts(corner)
             reach = self.offset_reach_v(corner, setting, corner.network(setting).gain)
             lowest = np.minimum(lowest, middle - reach)
             highest = np.maximum(highest, middle + reach)

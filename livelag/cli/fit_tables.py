@@ -15,6 +15,9 @@ from livelag.cli.fit_job import Found, Judged, PartLine
 from livelag.units import format_value
 
 
+_DISAGREE = 3.0
+
+
 def show(out: Console, stage: GlideStage, found: Found, accuracy: float) -> None:
     """Show every capture, the parts if several tell them, and the verdict."""
     if found.parts is not None:
@@ -109,9 +112,15 @@ def _explained(one: Judged, accuracy: float) -> str:
 
 def _limits_explained(accuracy: float) -> str:
     return (
-        "Limits are the worst that parts within their tolerances can do.\nGain and offset allow for "
-        f"an oscilloscope good to {100 * accuracy:g} %."
+        "Limits are the worst that parts within their tolerances can do.\nGain and offset allow "
+        f"for an oscilloscope good to {100 * accuracy:g} %."
     )
+
+
+def _telling(lines: tuple[Line, ...]) -> list[Line]:
+    """Lines that are outside; the rise only where the time constant is not."""
+    outside = [line for line in lines if line.verdict == OUTSIDE]
+    return [line for line in outside if line.key != "rise_s" or len(outside) == 1]
 
 
 def _captures_table(captures: tuple[Judged, ...]) -> Table:
@@ -122,7 +131,7 @@ def _captures_table(captures: tuple[Judged, ...]) -> Table:
         if one.setting is None:
             continue
         fit, line = one.fit, one.lines[0]
-        outside = [each.what for each in one.lines if each.verdict == OUTSIDE]
+        outside = [each.what for each in _telling(one.lines)]
         table.add_row(
             Path(fit.name).name,
             one.range_name,
@@ -162,6 +171,11 @@ def _parts_explained(found: Found) -> str:
             f" The time constants agree with one another to {found.parts.misfit:.2g} of what "
             "their intervals allow."
         )
+        if found.parts.misfit > _DISAGREE:
+            text += (
+                "\nThat is too much: check that each capture is given with its own range and "
+                "rotation."
+            )
     return text
 
 
@@ -169,8 +183,7 @@ def _summary(found: Found) -> str:
     outside = [
         f"{line.what} ({one.where})" if len(found.captures) > 1 else line.what
         for one in found.captures
-        for line in one.lines
-        if line.verdict == OUTSIDE
+        for line in _telling(one.lines)
     ]
     outside += [line.what for line in found.part_lines if line.verdict == OUTSIDE]
     if outside:

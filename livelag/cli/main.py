@@ -25,6 +25,7 @@ COMMANDS = (
     "arrival",
     "tuning",
     "spread",
+    "sheet",
     "fit",
     "presets",
     "devices",

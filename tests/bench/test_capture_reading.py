@@ -149,7 +149,7 @@ def test_blanks_are_left_out(tmp_path):
     path.write_text(path.read_text(encoding="utf-8").replace("nan", ""), encoding="utf-8")
     capture = read_capture(path)
     assert capture.times_s.size == 196
-    assert "4 rows" in capture.notes[0]
+    assert capture.notes == ("rows with blanks or NaN are left out: 4",)
 
 
 def csv_of(*lines):

@@ -146,6 +146,11 @@ def test_a_good_stage_is_within():
     assert OUTSIDE not in {line.verdict for line in said(GOOD).values()}
 
 
+def test_the_other_range_is_recognised():
+    suspect = said(GOOD, Setting(1, 0.5))["time_constant_s"].suspect
+    assert "as of range 'fast' at this rotation" in suspect
+
+
 @pytest.mark.parametrize(("capacitance", "word"), [(470e-9, "too large"), (220e-9, "too small")])
 def test_a_wrong_capacitor_is_suspected(capacitance, word):
     lines = said(Circuit(236e3, capacitance, divider=0.999))

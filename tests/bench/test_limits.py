@@ -157,7 +157,7 @@ def test_limits_are_the_extremes_of_every_corner_of_every_part(stage):
         assert (limits.low, limits.high) == pytest.approx((least, most), rel=1e-11)
 
 
-@settings(deadline=None, max_examples=100)
+@settings(deadline=None, max_examples=50)
 @given(stages_with_settings(), st.randoms(use_true_random=False))
 def test_any_build_of_any_stage_is_within(at, random):
     stage, setting = at
