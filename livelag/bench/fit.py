@@ -227,7 +227,7 @@ def _answer(
         gain=Measured(float(found.linear[0]), float(u95[first_linear])),
         offset_v=Measured(float(found.linear[1]), float(u95[first_linear + 1])),
         delay_s=Measured(float(found.shape[1]), math.hypot(float(u95[1]), unseen)),
-        rise_s=Measured(rise, rise * float(u95[0])),
+        rise_s=Measured(rise, rise * relative),
         absorption_share=fraction,
         absorption_time_s=time,
         criterion_change=change,

@@ -14,7 +14,6 @@ from livelag.cli.common import new_table
 from livelag.cli.fit_job import Found, Judged, PartLine
 from livelag.units import format_value
 
-
 _DISAGREE = 3.0
 
 

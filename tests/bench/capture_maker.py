@@ -132,7 +132,37 @@ def write_capture(
         lines.append(separator.join(units) + trailing)
     columns = ([times] if with_time else []) + list(channels)
     for row in zip(*columns, strict=True):
-        cells = [f"{value:.{digits}g}".replace(".", decimal) for value in row]
+        cells = [f"{value + 0.0:.{digits}g}".replace(".", decimal) for value in row]
         lines.append(separator.join(cells) + trailing)
     path.write_bytes((newline.join(lines) + newline).encode(encoding))
     return path
+
+
+# The captures in tests/captures: one built unit of the shipped two-range stage, whose parts are all
+# within their tolerances, as four kinds of oscilloscope would export it.
+BUILT_POT_OHMS, BUILT_SERIES_OHMS, BUILT_SMALL_F, BUILT_LARGE_F = 512e3, 1.004e3, 318e-9, 4.95e-6
+SHIPPED = {
+    "fast-0.csv": (0, 0.0, {"units": ("s", "V", "V")}),
+    "fast-half.csv": (
+        0, 0.5,
+        {"preamble": ("Record Length,300", "Comment,simulated puppet theatre glide"),
+         "units": ("s", "V", "V")},
+    ),
+    "fast-1.csv": (0, 1.0, {"separator": ";", "decimal": ","}),
+    "slow-1.csv": (1, 1.0, {"separator": "\t", "names": ("Time (s)", "key (V)", "glide (V)")}),
+}  # fmt: skip
+
+
+def write_shipped(folder):
+    """Write the captures of tests/captures to a folder."""
+    for seed, (name, (large, rotation, shape)) in enumerate(SHIPPED.items(), start=21):
+        capacitance = BUILT_SMALL_F + large * BUILT_LARGE_F
+        circuit = Circuit(
+            BUILT_SERIES_OHMS + BUILT_POT_OHMS * rotation, capacitance, ((0.00225, 1.0),),
+            1e4 / capacitance, bias_a=30e-12, offset_in_v=2e-3, offset_out_v=-3e-3, divider=0.999,
+        )  # fmt: skip
+        tau = circuit.time_constant_s
+        interval = float(f"{tau / 40:.1g}")
+        generator = Generator((0.0, 4.0), (0.3 * interval,), rise_s=1e-4 * tau)
+        scope = Scope(300, interval, -40 * interval, seed=seed)
+        write_capture(folder / name, *record(circuit, generator, scope), digits=5, **shape)
