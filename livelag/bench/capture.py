@@ -18,6 +18,7 @@ from livelag.errors import FileError, InputError
 Vector = NDArray[np.float64]
 Matrix = NDArray[np.float64]
 FEWEST_ROWS = 16
+LARGEST_V, LATEST_S = 1e6, 1e10
 
 
 @dataclass(frozen=True)
@@ -95,8 +96,23 @@ def read_capture(
         times = rows[kept, time_at] * columns[time_at].scale
         times, volts, said = even_stamps(str(path), times, volts)
         notes += said
+    _check_sizes(path, times, volts)
     names = tuple(columns[i].name for i in alive)
     return Capture(str(path), times, names, volts, tuple(notes))
+
+
+def _check_sizes(path: Path, times_s: Vector, volts: Matrix) -> None:
+    """Refuse what cannot be seconds and volts.
+
+    Raises:
+        InputError: naming the value.
+    """
+    largest = float(np.abs(volts).max())
+    if largest > LARGEST_V:
+        raise InputError(f"{path}: holds {largest:.3g} V; expected volts, at most {LARGEST_V:g}")
+    latest = float(np.abs(times_s).max())
+    if latest > LATEST_S:
+        raise InputError(f"{path}: holds a time of {latest:.3g} s; expected {LATEST_S:g} at most")
 
 
 def _time_column(

@@ -66,7 +66,9 @@ def _parse(path: Path, layout: Layout, first_line: int, lines: list[str]) -> Row
     if layout.decimal_comma:
         text = "".join(lines).replace(",", ".").splitlines()
     try:
-        return np.loadtxt(text, delimiter=layout.separator, usecols=layout.columns, ndmin=2)
+        return np.loadtxt(
+            text, delimiter=layout.separator, usecols=layout.columns, ndmin=2, comments=None
+        )
     except ValueError:
         return _parse_slowly(path, layout, first_line, lines)
 

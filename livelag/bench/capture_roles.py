@@ -19,6 +19,7 @@ from livelag.bench.fit_window import Trace, average, edges_of, new_trace, noise_
 from livelag.errors import InputError, UnknownNameError
 
 Vector = NDArray[np.float64]
+SMALLEST_V = 1e-9  # no oscilloscope shows less
 _ROUGH_ROWS = 4000
 # The right way round leaves much less than the wrong way, or so clearly less that it is no chance:
 # twice the logarithm of the likelihood ratio under white noise.
@@ -75,7 +76,7 @@ def find_roles(
     left, rough_s, a, b = tried[0]
     trace = new_trace(capture.times_s, capture.volts[a], capture.volts[b])
     swapped = next((row[0] for row in tried if row[2:] == (b, a)), None)
-    ratio = tried[1][0] / max(left, 1e-300) if len(tried) > 1 else math.inf
+    ratio = max(tried[1][0], 1e-30) / max(left, 1e-30) if len(tried) > 1 else math.inf
     rows = min(len(trace.times_s), _ROUGH_ROWS)
     if None in told and ratio < _MUCH and rows * math.log(ratio) < _NO_CHANCE:
         reason = "move alike" if swapped == tried[1][0] else "fit one another equally well"
@@ -102,7 +103,7 @@ def _moves(volts: Vector) -> bool:
     # The reach of noise alone over n samples grows as sqrt(2 ln n).
     reach = 2.0 * noise_v(volts) * (2.0 * np.log(len(volts))) ** 0.5
     middle = float(np.ptp(np.quantile(volts, (0.02, 0.98))))
-    return span > 1.6 * reach and middle > 0.0
+    return span > max(1.6 * reach, SMALLEST_V) and middle > 0.0
 
 
 def _check_moving(capture: Capture, moving: list[int], told: list[int | None]) -> None:

@@ -160,7 +160,8 @@ def _layout(lines: list[str], encoding: str, separator: str | None, decimal_comm
     usual: dict[tuple[int, ...], int] = {}
     for i in filled[-30:]:
         shape = _numeric_cells(rows[i], decimal_comma)
-        usual[shape] = usual.get(shape, 0) + 1
+        if shape:
+            usual[shape] = usual.get(shape, 0) + 1
     columns = max(usual, key=lambda shape: (usual[shape], len(shape)))
     starts = {i for i in filled if set(columns) <= set(_numeric_cells(rows[i], decimal_comma))}
     # Two rows of data in succession: a lone row of numbers above may be part of the preamble.
