@@ -113,13 +113,25 @@ def fit_capture(
     trace = thinned(roles.trace, roles.rough_s)
     model = Model(trace)
     search = _Search(model, roles.rough_s)
-    plain = search.plain
-    with_soak, change = search.absorption()
-    chosen = plain if with_soak is None else with_soak
+    chosen = search.plain
     spread = spread_of(trace, chosen)
+    soaked, change = search.absorption()
+    if soaked is not None:
+        apart = spread_of(trace, soaked)
+        shown = Absorption(float(soaked.shape[2]), float(np.exp(soaked.shape[3])))
+        allowed = expected_absorption or (shown,)
+        if _unsure(soaked, apart, expected_absorption) < _unsure(chosen, spread, allowed):
+            chosen, spread = soaked, apart
+        else:
+            expected_absorption = allowed
+            said.append(
+                "the capacitor soaks, but the capture cannot tell that from the time constant; "
+                "the interval is wider for it: hold the step for longer, with less noise"
+            )
     answer = _answer(name, roles, model, chosen, spread, expected_absorption, change)
-    check_fit(name, roles, trace, answer.time_constant_s.value, answer.time_constant_s.u95,
-              answer.residual_v[trace.usable], len(model.edges))  # fmt: skip
+    tau = answer.time_constant_s.value
+    by_noise = tau * _unsure(chosen, spread, ())
+    check_fit(name, roles, trace, tau, by_noise, answer.residual_v[trace.usable], len(model.edges))
     if trace.averaged > 1:
         said.append(f"samples are averaged in groups of {trace.averaged}")
     if spread.excess > 2.0:
@@ -213,8 +225,7 @@ def _answer(
         fraction = Measured(float(found.shape[2]), float(u95[2]))
         soak_s = float(np.exp(found.shape[3]))
         time = Measured(soak_s, soak_s * float(u95[3]))
-    hidden = _hidden_share(tau, expected, None if time is None else time.value)
-    relative = math.hypot(float(u95[0]), 1.96 * hidden)
+    relative = _unsure(found, spread, expected)
     # Where between two rows the first edge was is part of the delay: uniform over the interval,
     # whose ends jitter.
     unseen = 1.96 * math.sqrt(model.trace.interval_s**2 / 12.0 + spread.jitter_s**2)
@@ -237,6 +248,16 @@ def _answer(
         trace=model.trace,
         fitted_v=found.fitted_v,
         notes=(),
+    )
+
+
+def _unsure(found: Solution, spread: Spread, expected: tuple[Absorption, ...]) -> float:
+    """Half-width of the interval of the time constant, relative, with what absorption may hide."""
+    soak_s = float(np.exp(found.shape[3])) if len(found.shape) == 4 else None
+    hidden = _hidden_share(float(np.exp(found.shape[0])), expected, soak_s)
+    freedom = len(found.residual_v) - found.jacobian.shape[1]
+    return math.hypot(
+        _quantile(freedom) * math.sqrt(max(spread.covariance[0, 0], 0.0)), 1.96 * hidden
     )
 
 

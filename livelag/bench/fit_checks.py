@@ -62,7 +62,7 @@ def check_fit(
         roles: the whole capture.
         trace: what was fitted.
         tau: time constant in seconds.
-        u95: half-width of its interval in seconds.
+        u95: half-width of its interval in seconds, what absorption may hide left out.
         residual: (rows,) output less fit.
         steps: jumps of the input that were used.
 
