@@ -93,7 +93,8 @@ def run(args: argparse.Namespace) -> None:
     def draw() -> Any:
         from livelag.report.fit_figure import fit_figure
 
-        return fit_figure(stage.title, [(one.where, one.fit) for one in found.captures])
+        title = stage.title if found.captures[0].setting else ""  # not said to be of this stage
+        return fit_figure(title, [(one.where, one.fit) for one in found.captures])
 
     written = write_extras(args, lambda: _csv_rows(found), draw, built)
     if args.json:

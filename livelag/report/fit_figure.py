@@ -23,13 +23,14 @@ def fit_figure(title: str, fits: Sequence[tuple[str, CaptureFit]]) -> Figure:
     """A pair of panels for each capture: data and fit above, residual below.
 
     Args:
-        title: first line of the heading.
+        title: first line of the heading, none if empty.
         fits: where the controls stood, in words, and the fit; one or more.
     """
     across = min(len(fits), _MOST_ACROSS)
     down = -(-len(fits) // across)
     figure = new_figure(9.0 if across == 1 else 5.4 * across, 6.2 if down == 1 else 4.6 * down)
-    figure.suptitle(title, fontsize=11, parse_math=False)
+    if title:
+        figure.suptitle(title, fontsize=11, parse_math=False)
     cells = figure.subfigures(down, across, squeeze=False)
     for number, (where, fit) in enumerate(fits):
         _draw(cells[number // across, number % across], where, fit)
@@ -52,7 +53,7 @@ def _draw(cell: Any, where: str, fit: CaptureFit) -> None:
     )  # fmt: skip
     if not use.all():
         upper.plot(
-            t[~use], fit.trace.output_v[rows][~use], "x", color="0.5", markersize=4.0,
+            t[~use], fit.trace.output_v[rows][~use], ".", color="0.6", markersize=2.0,
             label="clipped, left out",
         )  # fmt: skip
     upper.plot(t, fit.fitted_v[rows], color=ERROR_COLOUR, linewidth=1.6, label="fit")
