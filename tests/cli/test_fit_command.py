@@ -199,6 +199,7 @@ def test_a_bad_file_is_one_line(cli, tmp_path, what):
         (["c.csv@fast:0.5", "--save", "no/b.toml", "--csv", "r.csv"], 1, "no/b.toml"),
         (["c.csv", "--picture", "p.bmp"], 1, "unknown picture suffix '.bmp'"),
         (["c.csv", "--csv", "x.png", "--picture", "x.png"], 1, "name the same file"),
+        (["c.csv", "--csv", "c.csv"], 1, "--csv is 'c.csv', which is a capture"),
         (["c.csv", "--in", "CH9"], 1, "unknown channel 'CH9'; did you mean 'CH2'"),
         (["c.csv", "--in", "1", "--out", "CH1"], 1, "input and output are both 'CH1'"),
         (["c.csv", "--in", "CH2"], 1, "does not follow 'CH2' as a glide does"),
