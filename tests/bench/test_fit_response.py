@@ -35,14 +35,14 @@ def test_uneven_samples_are_exact(tau):
 @given(
     st.floats(1e-3, 1e3), st.floats(-5, 5), st.lists(st.floats(1e-4, 2e4), min_size=20, max_size=40)
 )
-@settings(deadline=None, max_examples=50)
+@settings(deadline=None, max_examples=40)
 def test_what_rests_stays_and_nothing_overflows(tau, level, steps):
     times = np.cumsum(steps)
     np.testing.assert_allclose(lag_at_samples(times, np.full(len(times), level), tau), level)
     jumped = np.where(np.arange(len(times)) < 10, 0.0, level)
     answer = lag_at_samples(times, jumped, tau)
     assert np.isfinite(answer).all()
-    assert np.abs(answer).max() <= abs(level) * (1 + 1e-9)
+    assert np.abs(answer).max() <= abs(level) * (1 + 1e-7)  # ages of 1e7 time constants are rounded
 
 
 def test_blocks_do_not_show():
