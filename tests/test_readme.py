@@ -2,6 +2,7 @@
 
 import re
 import shlex
+import shutil
 from pathlib import Path
 
 import pytest
@@ -26,6 +27,8 @@ def trimmed(text):
 
 def test_every_command_shown_gives_the_output_shown(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
+    # Commands that read a capture are shown as from a checkout.
+    shutil.copytree(README.parent / "tests" / "captures", tmp_path / "tests" / "captures")
     shown = list(commands())
     assert len(shown) >= 3
     for command, output in shown:

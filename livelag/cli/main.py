@@ -27,6 +27,7 @@ COMMANDS = (
     "spread",
     "parts",
     "sheet",
+    "fit",
     "presets",
     "devices",
 )
