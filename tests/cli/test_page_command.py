@@ -9,7 +9,7 @@ import mido
 import pytest
 import soundfile
 
-import livelag as livelag_package
+from livelag.circuit.presets import presets_folder
 from livelag.cli import render_page
 from livelag.report.listening_page import page_files
 
@@ -204,7 +204,7 @@ def test_a_file_is_no_folder(livelag, tmp_path):
 
 def test_names_of_any_kind_make_safe_files_and_a_whole_page(livelag, tmp_path):
     name = '../é<b>&"' + "x" * 300
-    shipped = Path(livelag_package.__file__).parent.parent / "presets/two-range-film.toml"
+    shipped = presets_folder() / "two-range-film.toml"
     text = shipped.read_text(encoding="utf-8").replace("Two ranges, film", "<i>Two & a half</i>")
     (tmp_path / "odd.toml").write_text(text.replace('"fast"', f"'{name}'"), encoding="utf-8")
     arguments = ("odd.toml", *COMMON[1:], "--range", name, "--rotation", 0.5, "--page", "send")
