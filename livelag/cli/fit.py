@@ -109,6 +109,7 @@ def run(args: argparse.Namespace) -> None:
         out.print(f"as built in {saved}; hear it beside the plan:")
         for preset in (args.preset, saved):
             out.print(f"  livelag render {preset} {_hear(found)}", soft_wrap=True)
+        out.print(f"  livelag audition {saved} {_hear(found)}", soft_wrap=True)
 
 
 def _hear(found: Found) -> str:

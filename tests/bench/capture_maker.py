@@ -154,7 +154,7 @@ SHIPPED = {
 
 
 def write_shipped(folder):
-    """Write the captures of tests/captures to a folder."""
+    """Write the captures of tests/captures to a folder: the square of the bench sheet, 1 to 5 V."""
     for seed, (name, (large, rotation, shape)) in enumerate(SHIPPED.items(), start=21):
         capacitance = BUILT_SMALL_F + large * BUILT_LARGE_F
         circuit = Circuit(
@@ -163,6 +163,6 @@ def write_shipped(folder):
         )  # fmt: skip
         tau = circuit.time_constant_s
         interval = float(f"{tau / 40:.1g}")
-        generator = Generator((0.0, 4.0), (0.3 * interval,), rise_s=1e-4 * tau)
+        generator = Generator((1.0, 5.0), (0.3 * interval,), rise_s=1e-4 * tau)
         scope = Scope(300, interval, -40 * interval, seed=seed)
         write_capture(folder / name, *record(circuit, generator, scope), digits=5, **shape)
