@@ -75,6 +75,7 @@ def audition(args: argparse.Namespace, stage: GlideStage) -> None:
             waveform=str(patch.get("waveform")), level_dbfs=float(patch.get("level")),
             message=EARS,
         )  # fmt: skip
+        desk.foresee()
         loop = None
         if notes is not None:
             messages, duration_s = notes

@@ -14,6 +14,7 @@ from livelag.errors import LivelagError
 from livelag.live.controllers import portamento_message, pot_messages, range_message
 from livelag.live.engine import Engine
 from livelag.live.take import TakeRecorder, next_take_path
+from livelag.notes.player import FULL_TURN
 from livelag.sound.oscillator import WAVEFORMS
 from livelag.sound.parameters import PARAMETERS, Change
 from livelag.units import format_value, note_name
@@ -99,6 +100,14 @@ class Desk:
         }
         for degree in range(len(MAJOR_SCALE)):
             self._actions[f"degree_{degree + 1}"] = lambda d=degree: self._play(d)  # type: ignore[misc]
+
+    def foresee(self) -> None:
+        """Work out, before the sound runs, where controllers and keys can turn the pot."""
+        places = {128 * coarse for coarse in range(128)}
+        for turn in (SMALL_TURN, LARGE_TURN):
+            turned = (self.setting.rotation + turn * steps for steps in range(-128, 129))
+            places.update(round(FULL_TURN * r) for r in turned if 0.0 <= r <= 1.0)
+        self.engine.patch.foresee(place / FULL_TURN for place in sorted(places))
 
     @property
     def actions(self) -> tuple[str, ...]:

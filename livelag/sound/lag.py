@@ -15,7 +15,8 @@ its solution is a decay toward the settled mode y_inf = -g u/s, which all three 
 
     y[n] = y_inf + (y[0] - y_inf) p^n                                                   (4)
 
-and `Lag.hold` takes it from a table of powers, at a tenth of the recursion's time.
+and `Lag.hold` takes p^n from two short tables, as p^(64 j) p^i, at a tenth of the recursion's
+time.
 
 State. Between blocks the lag holds, per mode, what frame n + 1 starts from before its source is
 known: z[n+1] for exact, (1 + sT/2) z[n] + T/2 g u[n] for bilinear, e^(sT) z[n] + F1 g u[n] for
@@ -26,6 +27,7 @@ through volts whenever they move, since a moving pot changes the modes but not t
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
@@ -37,9 +39,11 @@ from livelag.circuit.stage import GlideStage, Setting
 from livelag.errors import UnknownNameError
 
 METHODS = ("exact", "bilinear", "ramp")
-_CACHED_SETTINGS = 256  # a controller's 128 positions in two ranges
-_SHORT = 32  # a divisor of _ROW
-_ROW = 1024  # frames per row of powers; rows count from the start of a run, never from a block
+_CACHED_SETTINGS = 4096  # a kilobyte each
+_NOTHING_V = 1e-18  # what is left of a decay when it changes no sample any more
+_SHORT = 64
+_LONG = 512
+_ROW = _SHORT**2  # frames between powers taken anew, from the start of a run, never of a block
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +57,8 @@ class _Filters:
         b1: weight of the source at the frame before.
         state_scale: d per unit of the documented state.
         settled: y_inf per volt of source.
-        powers: (driven, _ROW) p^0 to p^(_ROW - 1).
+        powers: (driven, 1, _SHORT) p^0 to p^(_SHORT - 1).
+        leaps: (driven, _SHORT, 1) p^0, p^_SHORT and so on below p^_ROW.
         silent_poles: (silent,) poles in 1/s that only leak.
     """
 
@@ -64,6 +69,7 @@ class _Filters:
     state_scale: Vector
     settled: Vector
     powers: NDArray[np.float64]
+    leaps: NDArray[np.float64]
     silent_poles: Vector
 
 
@@ -76,16 +82,18 @@ class _Run:
         source: what it is worth as a source.
         deviation: (driven,) y[0] - y_inf of equation 4.
         settled_bus: the bus once all has settled.
-        decays: per mode that the bus shows, its weight there at frame 0, p, and its powers.
+        decays: per mode that the bus shows, its weight there at frame 0, p, and its number.
         frames: how long it has been held.
+        rows: (driven, _ROW) powers of p, once a long stretch has asked for them.
     """
 
     key_volts: float
     source: float
     deviation: Vector
     settled_bus: float
-    decays: tuple[tuple[float, float, Vector], ...]
+    decays: tuple[tuple[float, float, int], ...]
     frames: int = 0
+    rows: NDArray[np.float64] | None = None
 
 
 def _coefficients(
@@ -109,17 +117,11 @@ def _coefficients(
     return p, f0, held - f0, np.ones_like(p)
 
 
-def _powers(poles: Vector) -> NDArray[np.float64]:
-    """(driven, _ROW) p^0 to p^(_ROW - 1), as p^i p^(32 j): two short runs and their products."""
-    column = poles[:, np.newaxis]
-    short = np.repeat(column, _SHORT, axis=1)
-    short[:, 0] = 1.0
-    np.multiply.accumulate(short, axis=1, out=short)
-    long = np.repeat(short[:, -1:] * column, _ROW // _SHORT, axis=1)
-    long[:, 0] = 1.0
-    np.multiply.accumulate(long, axis=1, out=long)
-    powers: NDArray[np.float64] = long[:, :, np.newaxis] * short[:, np.newaxis, :]
-    return powers.reshape(len(poles), _ROW)
+def _powers(bases: Vector) -> NDArray[np.float64]:
+    """(driven, _SHORT) powers of each base, from the 0th."""
+    powers = np.repeat(bases[:, np.newaxis], _SHORT, axis=1)
+    powers[:, 0] = 1.0
+    return np.multiply.accumulate(powers, axis=1, out=powers)
 
 
 class Lag:
@@ -159,6 +161,11 @@ class Lag:
         # At rest y = y_inf, so the state that waits for the next source is y_inf - b0 u.
         self._delay = self._filters.settled * self._source - self._filters.b0 * self._source
 
+    def foresee(self, settings: Iterable[Setting]) -> None:
+        """Work out settings ahead of time, so that a move to one of them costs less."""
+        for setting in settings:
+            self._filters_at(setting)
+
     def _filters_at(self, setting: Setting) -> _Filters:
         found = self._cache.get(setting)
         if found is None:
@@ -171,6 +178,8 @@ class Lag:
         n = network.driven_count
         poles, drive = network.poles[:n], network.drive[:n]
         p, b0, b1, scale = _coefficients(self.method, poles, self._step_s)
+        powers = _powers(p)
+        leaps = _powers(powers[:, -1] * p)
         return _Filters(
             network=network,
             poles=p,
@@ -178,7 +187,8 @@ class Lag:
             b1=b1 * drive,
             state_scale=scale,
             settled=-drive / poles,
-            powers=_powers(p),
+            powers=powers[:, np.newaxis, :],
+            leaps=leaps[:, :, np.newaxis],
             silent_poles=network.poles[n:],
         )
 
@@ -250,12 +260,26 @@ class Lag:
             row, start = divmod(run.frames + done, _ROW)
             count = min(_ROW - start, frames - done)
             part = bus[done : done + count]
-            for weight, pole, powers in run.decays:
-                part += weight * pole ** (row * _ROW) * powers[start : start + count]
+            for weight, pole, mode in run.decays:
+                weight *= pole ** (row * _ROW)
+                if abs(weight) > _NOTHING_V:
+                    part += weight * self._powers_of(run, mode, start, count)
             done += count
         run.frames += frames
         self._frames_since += frames
         return self.stage.output_volts(bus)
+
+    def _powers_of(self, run: _Run, mode: int, start: int, count: int) -> Vector:
+        """(count,) p^start and on; a long stretch pays for the whole row, a short one does not."""
+        leaps, powers = self._filters.leaps, self._filters.powers
+        if count >= _LONG:
+            if run.rows is None:
+                run.rows = (leaps * powers).reshape(len(leaps), _ROW)
+            return run.rows[mode, start : start + count]
+        first, last = start // _SHORT, (start + count - 1) // _SHORT + 1
+        begin = start - first * _SHORT
+        stretch: Vector = (leaps[mode, first:last] * powers[mode]).ravel()[begin : begin + count]
+        return stretch
 
     def _begin_run(self, key_volts: float) -> _Run:
         self._end_run()
@@ -266,8 +290,8 @@ class Lag:
         per_volt = float(network.readout[:n] @ filters.settled) + network.feedthrough
         weights = network.readout[:n] * deviation
         decays = tuple(
-            (float(weight), float(pole), powers)
-            for weight, pole, powers in zip(weights, filters.poles, filters.powers, strict=True)
+            (float(weight), float(pole), mode)
+            for mode, (weight, pole) in enumerate(zip(weights, filters.poles, strict=True))
             if weight
         )
         self._run = _Run(key_volts, source, deviation, per_volt * source, decays)

@@ -6,6 +6,8 @@ whole frames, so that the samples do not depend on the block sizes.
 
 from __future__ import annotations
 
+from functools import cache
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -15,6 +17,15 @@ CEILING_DBFS = -1.0
 ATTACK_S = 0.003
 RELEASE_S = 0.010
 RETRIGGER_S = 0.002
+
+
+@cache
+def _smoothstep(frames: int) -> NDArray[np.float64]:
+    """(frames,) 3 x^2 - 2 x^3 for x from 0, in steps of 1 / frames."""
+    x = np.arange(frames) / frames
+    steps: NDArray[np.float64] = x * x * (3.0 - 2.0 * x)
+    steps.setflags(write=False)
+    return steps
 
 
 class Level:
@@ -46,8 +57,7 @@ class Level:
         if not self._plan:
             return self._from
         target, frames = self._plan[0]
-        x = self._done / frames
-        return self._from + (target - self._from) * x * x * (3.0 - 2.0 * x)
+        return self._from + (target - self._from) * float(_smoothstep(frames)[self._done])
 
     @property
     def at_rest(self) -> bool:
@@ -78,10 +88,10 @@ class Level:
         while self._plan and position < len(gains):
             target, frames = self._plan[0]
             count = min(frames - self._done, len(gains) - position)
-            x = np.arange(self._done, self._done + count) / frames
-            gains[position : position + count] = self._from + (target - self._from) * x * x * (
-                3.0 - 2.0 * x
-            )
+            ramp = gains[position : position + count]
+            steps = _smoothstep(frames)[self._done : self._done + count]
+            np.multiply(steps, target - self._from, out=ramp)
+            ramp += self._from
             position += count
             self._done += count
             if self._done == frames:

@@ -84,12 +84,13 @@ def _half(w: float) -> float:
 
 
 def _triangle(c: Samples, w: float) -> Samples:
-    value = c * 4.0  # 1 - |2 - |4 c + 1||
+    value = c + 0.25  # 1 - 4 |1/2 - |c + 1/4||
+    np.abs(value, out=value)
+    value -= 0.5
+    np.abs(value, out=value)
+    value *= -4.0
     value += 1.0
-    np.abs(value, out=value)
-    np.subtract(2.0, value, out=value)
-    np.abs(value, out=value)
-    return np.subtract(1.0, value, out=value)
+    return value
 
 
 def _sine(c: Samples, w: float) -> Samples:
@@ -276,10 +277,13 @@ class Oscillator:
 
     def _run_phase(self, pitch_hz: Samples, frames: int) -> None:
         pitch = self._pitch[: 1 + frames]
-        np.fmax(pitch_hz, 0.0, out=pitch[1:])  # also turns NaN into 0
-        np.fmin(pitch[1:], self._highest_hz, out=pitch[1:])
-        clamped = np.not_equal(pitch[1:], pitch_hz, out=self._flags[:frames])
-        self.clamped_frames += int(np.count_nonzero(clamped))
+        if pitch_hz.min() >= 0.0 and pitch_hz.max() <= self._highest_hz:  # never so with a NaN
+            pitch[1:] = pitch_hz
+        else:
+            np.fmax(pitch_hz, 0.0, out=pitch[1:])  # also turns NaN into 0
+            np.fmin(pitch[1:], self._highest_hz, out=pitch[1:])
+            clamped = np.not_equal(pitch[1:], pitch_hz, out=self._flags[:frames])
+            self.clamped_frames += int(np.count_nonzero(clamped))
         double = np.add(pitch[:-1], pitch[1:], out=self._scratch[:frames])
         if not self._started:
             double[0] = 0.0

@@ -6,7 +6,7 @@ samples whatever the block sizes, since every message acts at its own frame.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 from typing import NamedTuple, TypeAlias
 
@@ -127,6 +127,14 @@ class Patch:
         self._gains = np.zeros(self.latency_frames + max_frames)
         self._prepared = True
         self.reset()
+
+    def foresee(self, rotations: Iterable[float]) -> None:
+        """Work out rotations of the pot ahead of time, so that turning it takes a block less."""
+        self._lag.foresee(
+            Setting(range_index, rotation)
+            for rotation in rotations
+            for range_index in range(len(self.stage.ranges))
+        )
 
     def reset(self, key_volts: float = 0.0) -> None:
         """Silence, no key held, the stage at rest on a key; parameters stay as they are."""
@@ -278,8 +286,10 @@ class Patch:
         if stop == start:
             return
         pitch = self._pitch[start:stop]
-        np.multiply(self._glide[start:stop], 1.0 / self.stage.scale.volts_per_octave, out=pitch)
-        np.exp2(pitch, out=pitch)
+        octaves = self._glide[start:stop]
+        if self.stage.scale.volts_per_octave != 1.0:
+            octaves = np.divide(octaves, self.stage.scale.volts_per_octave, out=pitch)
+        np.exp2(octaves, out=pitch)
         pitch *= self._zero_volt_hz
         piece = self._oscillator.process(pitch)
         pieces.append(piece)
