@@ -38,7 +38,8 @@ def test_uneven_samples_are_exact(tau):
 @settings(deadline=None, max_examples=40)
 def test_what_rests_stays_and_nothing_overflows(tau, level, steps):
     times = np.cumsum(steps)
-    np.testing.assert_allclose(lag_at_samples(times, np.full(len(times), level), tau), level)
+    rested = lag_at_samples(times, np.full(len(times), level), tau)
+    np.testing.assert_allclose(rested, level, atol=1e-300)  # volts too small for floats are none
     jumped = np.where(np.arange(len(times)) < 10, 0.0, level)
     answer = lag_at_samples(times, jumped, tau)
     assert np.isfinite(answer).all()
