@@ -9,7 +9,7 @@ from hypothesis import settings
 def pytest_configure():
     """Set both up."""
     # A run on a build machine judges the change; new examples are looked for at home.
-    settings.register_profile("ci", derandomize=True)
+    settings.register_profile("ci", derandomize=True, deadline=None, print_blob=True)
     if os.environ.get("CI"):
         settings.load_profile("ci")
     # Programs begun in a shell's background ignore Ctrl-C and Ctrl-Z, and so would every program
