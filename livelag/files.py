@@ -30,8 +30,8 @@ class WholeFiles:
         """An empty file beside ``path`` to write to, with the same suffix.
 
         Raises:
-            FileError: if the folder is missing or cannot be written to, or ``path`` is a folder
-                or no name that the system takes.
+            FileError: if the folder is missing or cannot be written to, or ``path`` is a folder,
+                a device or pipe, or no name that the system takes.
         """
         folder = path.parent
         try:
@@ -39,6 +39,9 @@ class WholeFiles:
                 raise FileError(f"{path}: folder {str(folder)!r} does not exist; make it first")
             if path.is_dir():
                 raise FileError(f"{path}: is a folder; name a file")
+            # Renaming over a device would put a file in its place, for every program there is.
+            if path.exists() and not path.is_file():
+                raise FileError(f"{path}: is a device or pipe; name a file")
         except OSError as error:
             if isinstance(error, FileError):
                 raise

@@ -1,6 +1,7 @@
 """Files that appear whole or not at all."""
 
 import errno
+import os
 import stat
 from pathlib import Path
 
@@ -64,6 +65,16 @@ def test_a_temporary_that_vanished_is_one_line(tmp_path):
     with pytest.raises(FileError, match=r"b\.csv: cannot be written"), WholeFiles() as files:
         files.temporary(tmp_path / "b.csv").unlink()
     assert not any(tmp_path.iterdir())
+
+
+@pytest.mark.skipif(not hasattr(os, "mkfifo"), reason="needs named pipes")
+def test_a_pipe_stays_a_pipe(tmp_path):
+    pipe = tmp_path / "pipe.csv"
+    os.mkfifo(pipe)
+    with pytest.raises(FileError, match=r"pipe\.csv: is a device or pipe"), WholeFiles() as files:
+        files.temporary(pipe).write_text("new")
+    assert pipe.is_fifo()
+    assert list(tmp_path.iterdir()) == [pipe]
 
 
 @pytest.mark.parametrize(

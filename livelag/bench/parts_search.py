@@ -115,10 +115,7 @@ def _no_candidate(wishes: Wishes, pool: Pool, around: GlideStage) -> str:
     factor = math.exp(nearest.worst_log)
     ways = [_one_pot_ways(wishes)] if _one_pot_is_to_blame(wishes) else []
     if not ways:
-        ways.append(
-            f"relax {_wish_of(wishes, worst)} from {format_value(worst.wished_s, 's')} to "
-            f"{format_value(worst.got_s, 's')}, a factor of {factor:.3g}"
-        )
+        ways.append(f"relax {_missed(wishes, nearest)}")
     if wishes.ranges > 1 and SERIES_SWITCHED not in wishes.connections:
         ways.append(f"allow the connection {SERIES_SWITCHED}")
     if factor <= _MOST_OFFERED:
@@ -126,6 +123,18 @@ def _no_candidate(wishes: Wishes, pool: Pool, around: GlideStage) -> str:
     return (
         f"no candidate {allowed}: the nearest reaches {format_value(worst.got_s, 's')} where "
         f"{format_value(worst.wished_s, 's')} is wished; {', or '.join(ways)}"
+    )
+
+
+def _missed(wishes: Wishes, nearest: Candidate) -> str:
+    """Every wish that would have to move for the nearest to be near enough, the worst first."""
+    limit = math.log1p(wishes.within)
+    missed = sorted(nearest.reached, key=lambda row: row.error_log, reverse=True)
+    return ", and ".join(
+        f"{_wish_of(wishes, row)} from {format_value(row.wished_s, 's')} to "
+        f"{format_value(row.got_s, 's')}, a factor of {math.exp(row.error_log):.3g}"
+        for row in missed
+        if row.error_log > limit
     )
 
 

@@ -48,9 +48,9 @@ def _polarity(stage: GlideStage, parts: PartList) -> Iterator[str]:
     polarised = [line for line in parts.capacitors if line.polarised]
     if polarised:
         names = " and ".join(line.reference for line in polarised)
-        verb = "is" if len(polarised) == 1 else "are"
+        verb, which = ("is", "it") if len(polarised) == 1 else ("are", "they")
         sentence = (
-            f"{names} {verb} polarised: plus to the hold node, minus to 0 V; reversed it can "
+            f"{names} {verb} polarised: plus to the hold node, minus to 0 V; reversed {which} can "
             "burst. Never take the input below 0 V"
         )
         if stage.supply.negative_v < 0.0:

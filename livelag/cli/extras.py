@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import os
 from collections.abc import Callable, Iterable, Sequence
 from itertools import combinations
 from pathlib import Path
@@ -18,6 +19,14 @@ if TYPE_CHECKING:
 
 Rows = tuple[Sequence[str], Iterable[Sequence[object]]]
 
+_READ = {
+    "preset": "the preset",
+    "midi": "the MIDI file",
+    "drawer": "the drawer",
+    "marks": "the marks file",
+}
+_WRITTEN = ("out", "cv", "csv", "picture", "save")
+
 
 def add_extras(parser: argparse.ArgumentParser, rows: str, picture: str) -> None:
     """Add `--csv` and `--picture`, saying what each shows."""
@@ -31,17 +40,45 @@ def check_extras(args: argparse.Namespace) -> None:
 
     Raises:
         UnknownNameError: if the picture's suffix is none of those known.
-        InputError: if both name the same file.
+        InputError: if two name the same file, or one a file that the command reads.
     """
     if args.picture is not None:
         from livelag.report.figures import check_picture
 
         check_picture(Path(args.picture))
     named = [(option, vars(args).get(option)) for option in ("csv", "picture", "save")]
-    given = [(option, Path(name).absolute()) for option, name in named if name is not None]
-    for (one, path), (other, same) in combinations(given, 2):
-        if path == same:
-            raise InputError(f"{path}: --{one} and --{other} name the same file")
+    given = [(option, name) for option, name in named if name is not None]
+    for (one, name), (other, same) in combinations(given, 2):
+        if same_file(name, same):
+            raise InputError(f"{name}: --{one} and --{other} name the same file")
+    keep_what_is_read(args)
+
+
+def same_file(one: str | Path, other: str | Path) -> bool:
+    """Whether two names, relative or by way of a link, stand for one place."""
+    return os.path.realpath(one) == os.path.realpath(other)
+
+
+def keep_what_is_read(args: argparse.Namespace, captures: Iterable[Path] = ()) -> None:
+    """Refuse to write over a file that the command reads.
+
+    Args:
+        args: the command line.
+        captures: files that it reads beside those of its options.
+
+    Raises:
+        InputError: naming the option.
+    """
+    given = vars(args)
+    read = [(given[option], what) for option, what in _READ.items() if given.get(option)]
+    read += [(path, "a capture") for path in captures]
+    for option in _WRITTEN:
+        if (name := given.get(option)) is None:
+            continue
+        for path, what in read:
+            # A shipped preset may have the name of a folder to write to.
+            if same_file(name, path) and os.path.isfile(path):  # noqa: PTH113 - quiet about any name
+                raise InputError(f"--{option} is {name!r}, which is {what}; name another file")
 
 
 def write_extras(

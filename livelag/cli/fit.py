@@ -7,7 +7,14 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from livelag.cli.common import DEFAULT_PRESET, add_command, console, refuse, show_json, warn
-from livelag.cli.extras import Rows, add_extras, check_extras, show_written, write_extras
+from livelag.cli.extras import (
+    Rows,
+    add_extras,
+    check_extras,
+    keep_what_is_read,
+    show_written,
+    write_extras,
+)
 from livelag.errors import InputError
 
 if TYPE_CHECKING:
@@ -81,7 +88,7 @@ def run(args: argparse.Namespace) -> None:
     stage = load_stage(args.preset)
     named = [_named(args, stage, text) for text in args.captures]
     _check_named(args, named)
-    _check_kept(args, [path for path, _ in named])
+    keep_what_is_read(args, [path for path, _ in named])
     for sentence in stage.warnings():
         warn(sentence)
     from livelag.cli import fit_job, fit_tables
@@ -185,18 +192,6 @@ def _check_named(args: argparse.Namespace, named: list[tuple[Path, Setting | Non
         refuse(args, "several captures each need their setting: FILE@RANGE:ROTATION")
     if args.save is not None and None in settings:
         refuse(args, "--save needs to know where the controls stood: --range and --rotation")
-
-
-def _check_kept(args: argparse.Namespace, captures: list[Path]) -> None:
-    """Refuse to write over a capture.
-
-    Raises:
-        InputError: naming the option.
-    """
-    kept = {path.absolute() for path in captures}
-    for option, name in (("csv", args.csv), ("picture", args.picture), ("save", args.save)):
-        if name is not None and Path(name).absolute() in kept:
-            raise InputError(f"--{option} is {name!r}, which is a capture; name another file")
 
 
 def _csv_rows(found: Found) -> Rows:

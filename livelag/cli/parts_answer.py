@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 from typing import Any
 
 from livelag.bench.candidates import Candidate
@@ -28,7 +29,7 @@ def parts_answer(
     wishes: Wishes, result: PartsResult, stage: GlideStage, choice: int
 ) -> dict[str, Any]:
     """All that was found, SI units in the key names."""
-    built = choice_spread(stage)
+    built = choice_spread(stage, wishes)
     return {
         "wishes": {
             "times_s": list(wishes.times_s),
@@ -89,9 +90,17 @@ def least_error(wishes: Wishes, connection: str) -> float:
     return 0.0 if connection == SERIES_SWITCHED else one_pot_error(wishes)
 
 
-def choice_spread(stage: GlideStage) -> SpreadResult:
-    """What tolerances do to the choice."""
-    return spread(stage, BUILDS, SEED)
+def choice_spread(stage: GlideStage, wishes: Wishes) -> SpreadResult:
+    """What tolerances do to the choice at the rotations wished; gaps are those of the whole pot."""
+    whole = spread(stage, BUILDS, SEED)
+    if wishes.ends == (0.0, 1.0):
+        return whole
+    # A pot whose stops are at these rotations: its two ends grow alike, as the whole one's do.
+    low, high = (stage.pot.resistance_at(rotation) for rotation in wishes.ends)
+    between = replace(stage.pot, resistance_ohms=high, end_ohms=low)
+    return replace(
+        spread(replace(stage, pot=between), BUILDS, SEED), gap_fraction=whole.gap_fraction
+    )
 
 
 def _candidate(number: int, one: Candidate, stage: GlideStage) -> dict[str, Any]:

@@ -37,8 +37,13 @@ def show_parts(
     out = console()
     out.print(_candidates_table(wishes, result.candidates))
     out.print(_LEGEND.format(result.combinations))
+    if wishes.ends != (0.0, 1.0):
+        out.print(
+            "Shortest and longest are at the pot's stops; the error, and the table below, are at "
+            "the rotations wished."
+        )
     chosen = result.candidates[choice - 1]
-    built = choice_spread(stage)
+    built = choice_spread(stage, wishes)
     out.print(_choice_table(chosen, built, choice))
     out.print(parts_sentence(chosen))
     polarised = [c.name for c in stage.capacitors if c.kind_data.polarised]

@@ -16,6 +16,7 @@ from livelag.cli.common import (
     show_json,
     warn,
 )
+from livelag.cli.extras import keep_what_is_read
 from livelag.cli.performance import add_setting_options, add_sound_options
 from livelag.cli.song_options import add_song_options, refuse_midi_options
 
@@ -68,8 +69,13 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
 
 
 def run(args: argparse.Namespace) -> None:
-    """Render one file or a numbered set."""
+    """Render one file or a numbered set.
+
+    Raises:
+        InputError: if an option has a value it cannot take.
+    """
     _refuse_contradictions(args)
+    keep_what_is_read(args)
     from livelag.circuit.presets import load_stage
     from livelag.cli.render_job import RenderJob
 

@@ -15,7 +15,7 @@ from livelag.cli.common import (
     refuse,
     show_json,
 )
-from livelag.cli.extras import Rows
+from livelag.cli.extras import Rows, keep_what_is_read, same_file
 from livelag.errors import InputError, UnknownNameError
 
 if TYPE_CHECKING:
@@ -52,13 +52,14 @@ def run(args: argparse.Namespace) -> None:
     """Show the bench sheet and write what was asked for.
 
     Raises:
-        InputError: if two files have one name.
+        InputError: if two files have one name, or one that of the preset.
         UnknownNameError: if there is no such paper or suffix.
     """
     if args.paper is not None and args.out is None:
         refuse(args, "--paper goes with --out")
     paper = _paper(args.paper)
     places = _places(args)
+    keep_what_is_read(args)
     stage = load_preset(args)
     from livelag.bench.sheet import bench_sheet
 
@@ -103,7 +104,7 @@ def _places(args: argparse.Namespace) -> tuple[Path, ...]:
     from livelag.report.sheet_files import sheet_paths
 
     places = sheet_paths(Path(args.out))
-    if args.csv is not None and Path(args.csv).absolute() in [p.absolute() for p in places]:
+    if args.csv is not None and any(same_file(args.csv, place) for place in places):
         raise InputError(f"{args.csv}: --csv and --out name the same file")
     return places
 

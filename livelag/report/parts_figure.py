@@ -19,7 +19,10 @@ _BAR = 0.24  # height of a range's bar; a choice has a row of height 1
 
 
 def parts_figure(wishes: Wishes, candidates: Sequence[Candidate]) -> Figure:
-    """A row for each choice, a bar for each of its ranges; behind them what was wished."""
+    """A row for each choice, a bar for each of its ranges; behind them what was wished.
+
+    The bars end at the rotations for which the times are wished.
+    """
     figure = new_figure(10.5, 1.7 + 0.62 * len(candidates))
     axes = figure.subplots()
     figure.suptitle(
@@ -29,7 +32,7 @@ def parts_figure(wishes: Wishes, candidates: Sequence[Candidate]) -> Figure:
         _draw_range(axes, wishes, candidates, index, name)
     for seconds in wishes.times_s:
         axes.axvline(seconds, color="0.35", linewidth=1.0, linestyle=(0, (4, 2)), zorder=0)
-    ends = [end for one in candidates for times in (*one.ranges_s, wishes.times_s) for end in times]
+    ends = [*wishes.times_s, *(end.got_s for one in candidates for end in one.reached)]
     axes.set_xscale("log")
     axes.set_xlim(min(ends) / 1.4, max(ends) * 1.4)
     axes.set_ylim(len(candidates) - 0.5, -0.5)
@@ -58,7 +61,7 @@ def _draw_range(
     low, high = wishes.targets[index]
     for row, one in enumerate(candidates):
         axes.barh(row + shift, high - low, _BAR, left=low, color=colour, alpha=0.22, linewidth=0)
-        shortest, longest = one.ranges_s[index]
+        shortest, longest = (end.got_s for end in one.reached[2 * index : 2 * index + 2])
         axes.plot(
             [shortest, longest], [row + shift, row + shift], "|-", color=colour, linewidth=2.2,
             markersize=8, markeredgewidth=1.6, label=f"range {name!r}" if row == 0 else None,

@@ -235,6 +235,19 @@ def test_no_candidate_names_the_handover_where_that_is_missed():
     assert "a factor of 2.97, or allow" in str(caught.value)
 
 
+def test_every_wish_that_is_missed_is_to_be_relaxed():
+    # 1 ms to 101 ms is all there is.
+    pool = pool_of([(1e3, 1)], [100e3], [(1e-6, "polyester", 1)])
+    wishes = wishes_from(1.5e-3, [], 0.14, within=0.1)
+    with pytest.raises(InputError) as caught:
+        find_parts(wishes, pool, BASE)
+    assert (
+        "relax shortest from 1.5 ms to 1 ms, a factor of 1.5, and longest from 140 ms to 101 ms, "
+        "a factor of 1.39, or allow"
+    ) in str(caught.value)
+    assert find_parts(replace(wishes, times_s=(1e-3, 0.101)), pool, BASE).candidates
+
+
 def test_relaxing_by_what_is_said_gives_a_candidate():
     strict = replace(WISHES, within=0.001)
     with pytest.raises(InputError, match=r"--within") as caught:

@@ -1,6 +1,6 @@
 """What the tests of commands share: a command line run in this process, and songs to give it."""
 
-from dataclasses import dataclass
+from typing import NamedTuple
 
 import pytest
 from mido import Message, MetaMessage, MidiFile, MidiTrack
@@ -8,8 +8,7 @@ from mido import Message, MetaMessage, MidiFile, MidiTrack
 from livelag.cli.main import run
 
 
-@dataclass
-class Answer:
+class Answer(NamedTuple):
     """How a command line ended."""
 
     status: int
@@ -30,6 +29,24 @@ def livelag(capsys, monkeypatch, tmp_path):
             status = end.code
         shown = capsys.readouterr()
         return Answer(status, shown.out, shown.err)
+
+    return call
+
+
+@pytest.fixture
+def refused(livelag, tmp_path):
+    """Run a command line that must fail and leave every file alone, and return its one line."""
+
+    def call(*arguments):
+        before = {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")}
+        answer = livelag(*arguments)
+        assert answer.status == 1, answer.err
+        assert answer.out == ""
+        assert answer.err.endswith("\n")
+        assert len(answer.err.splitlines()) == 1, answer.err
+        assert answer.err.startswith("livelag: ")
+        assert {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")} == before
+        return answer.err
 
     return call
 

@@ -3,11 +3,11 @@
 import csv
 import json
 import math
+from functools import partial
 
 import pytest
 from mido import Message
 
-from livelag.cli.main import run
 from livelag.notes.midi_file import TimedMessage, write_midi_file
 
 IDEAL = """
@@ -27,20 +27,10 @@ TAU = 50.5e-3  # at half a turn
 
 
 @pytest.fixture
-def cli(capsys, monkeypatch, tmp_path):
-    """Run a command line in an empty folder: (status, standard output, standard error)."""
-    monkeypatch.chdir(tmp_path)
+def cli(livelag, tmp_path):
+    """Run `livelag arrival` in a folder that holds a lone RC."""
     (tmp_path / "lone.toml").write_text(IDEAL, encoding="utf-8")
-
-    def call(*arguments):
-        capsys.readouterr()
-        try:
-            status = run(["arrival", *map(str, arguments)])
-        except SystemExit as end:
-            status = end.code
-        return (status, *capsys.readouterr())
-
-    return call
+    return partial(livelag, "arrival")
 
 
 @pytest.fixture
@@ -180,11 +170,8 @@ def test_notes_about_the_song_go_to_standard_error(cli, song):
         (["--picture", "a.jpeg"], "unknown picture suffix"),
     ],
 )
-def test_bad_input_is_one_line(cli, arguments, said):
-    status, out, err = cli(*arguments)
-    assert (status, out) == (1, "")
-    assert said in err
-    assert err.count("\n") == 1
+def test_bad_input_is_one_line_and_no_file(refused, arguments, said):
+    assert said in refused("arrival", *arguments)
 
 
 def test_a_share_of_a_song_that_turns_the_pot_is_refused(cli, song):

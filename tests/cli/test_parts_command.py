@@ -2,7 +2,9 @@
 
 import csv
 import json
+from functools import partial
 
+import numpy as np
 import pytest
 from rich.console import Console
 
@@ -25,11 +27,7 @@ capacitor,22u,electrolytic,2
 @pytest.fixture
 def parts(livelag):
     """Run `livelag parts` in an empty folder."""
-
-    def call(*arguments):
-        return livelag("parts", *arguments)
-
-    return call
+    return partial(livelag, "parts")
 
 
 @pytest.fixture
@@ -236,12 +234,8 @@ def test_csv_and_picture(parts, tmp_path):
         ((*TIMES, "--kinds", "c0g"), "no candidate within 25 % of the wishes: the nearest"),
     ],
 )
-def test_bad_input_is_one_line(parts, tmp_path, arguments, said):
-    ended = parts(*arguments)
-    assert (ended.status, ended.out) == (1, "")
-    assert said in ended.err
-    assert ended.err.count("\n") == 1
-    assert list(tmp_path.iterdir()) == []
+def test_bad_input_is_one_line_and_no_file(refused, arguments, said):
+    assert said in refused("parts", *arguments)
 
 
 @pytest.mark.parametrize(
@@ -285,3 +279,22 @@ def test_a_wrong_command_line(parts, arguments, said):
     ended = parts(*arguments)
     assert ended.status == 2
     assert said in ended.err
+
+
+def test_builds_are_looked_at_where_the_times_are_wished(parts, answer):
+    words = ("--shortest", "10ms", "--longest", "50ms", "--taper", "linear", "--ends", "0.1,0.6")
+    found = answer(*words)
+    best, row = found["candidates"][0], found["spread"]["ranges"][0]
+    # Uniform tolerances of 1 % (series) and 20 % (pot), and the capacitor's.
+    chance = np.random.default_rng(11).uniform(-1.0, 1.0, (200_000, 3))
+    farads = best["capacitors_f"][0] * (1.0 + 0.05 * chance[:, 0])
+    assert best["capacitor_kinds"] == ["polypropylene"]
+    for end, turn in (("shortest_s", 0.1), ("longest_s", 0.6)):
+        ohms = best["series_ohms"] * (1.0 + 0.01 * chance[:, 1])
+        ohms += turn * best["pot_ohms"] * (1.0 + 0.2 * chance[:, 2])
+        expected = np.quantile(ohms * farads, [0.025, 0.5, 0.975])
+        assert [row[end][key] for key in ("p2_5", "p50", "p97_5")] == pytest.approx(
+            expected, rel=5e-3
+        )
+    assert "the table below, are at the rotations wished" in " ".join(parts(*words).out.split())
+    assert "rotations wished" not in parts(*words[:4]).out

@@ -2,6 +2,7 @@
 
 import random
 import sys
+from functools import partial
 from pathlib import Path
 
 import pytest
@@ -16,21 +17,9 @@ IDEAL = (presets_folder() / "ideal.toml").read_text(encoding="utf-8")
 
 
 @pytest.fixture
-def refused(livelag, tmp_path):
-    """Run a command line that must fail, and return its one line."""
-
-    def call(*arguments):
-        before = {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")}
-        answer = livelag("render", *arguments)
-        assert answer.status == 1, answer.err
-        assert answer.out == ""
-        assert answer.err.endswith("\n")
-        assert len(answer.err.splitlines()) == 1, answer.err
-        assert answer.err.startswith("livelag: ")
-        assert {path: path.stat().st_mtime_ns for path in tmp_path.rglob("*")} == before
-        return answer.err
-
-    return call
+def refused(refused):
+    """Run a rendering that must fail, and return its one line."""
+    return partial(refused, "render")
 
 
 def test_missing_empty_and_foreign_midi_files(refused, tmp_path):

@@ -2,29 +2,19 @@
 
 import csv
 import json
+from functools import partial
 
 import pytest
 
 from livelag.circuit.presets import preset_names
-from livelag.cli.main import run
 
 CAUSES = ["input_offset", "output_offset", "bias_current", "insulation", "output_divider", "swing"]
 
 
 @pytest.fixture
-def cli(capsys, monkeypatch, tmp_path):
-    """Run a command line in an empty folder: (status, standard output, standard error)."""
-    monkeypatch.chdir(tmp_path)
-
-    def call(*arguments):
-        capsys.readouterr()
-        try:
-            status = run(["tuning", *map(str, arguments)])
-        except SystemExit as end:
-            status = end.code
-        return (status, *capsys.readouterr())
-
-    return call
+def cli(livelag):
+    """Run `livelag tuning` in an empty folder."""
+    return partial(livelag, "tuning")
 
 
 @pytest.mark.parametrize("preset", preset_names())
@@ -112,11 +102,8 @@ def test_csv_and_picture(cli, tmp_path):
         (["nowhere"], "unknown preset"),
     ],
 )
-def test_bad_input_is_one_line(cli, arguments, said):
-    status, out, err = cli(*arguments)
-    assert (status, out) == (1, "")
-    assert said in err
-    assert err.count("\n") == 1
+def test_bad_input_is_one_line_and_no_file(refused, arguments, said):
+    assert said in refused("tuning", *arguments)
 
 
 def test_a_wrong_command_line(cli):
