@@ -119,10 +119,23 @@ def clipped(volts: Vector, smooth: bool) -> Mask:
         turning, step = flicker(away), step_v(volts)
         # On a steep slope noise seldom turns a channel back, but bends it more than steps (0.41).
         noisy = turning > FLICKER or 0.0 < 0.5 * step < noise_v(away)
-        still = noisy and length >= LONG_RUN
+        still = noisy and length >= LONG_RUN and _blurred(away)
         if still or (smooth and _meets_at_speed(volts, extreme, int(starts[longest]), length)):
             cut |= _closed(at)
     return cut
+
+
+def _blurred(volts: Vector) -> bool:
+    """Whether noise covers so many of a converter's steps that no level looks still.
+
+    Noise of a fraction of a step shows on a level at the border of two, as 0.5 steps, and not at
+    all on one in the middle of a step. There a sample bends by two steps at most.
+    """
+    gaps = np.diff(np.unique(volts))
+    step = float(gaps[gaps > 1e-6 * np.ptp(volts)].min(initial=np.ptp(volts)))
+    bends = np.abs(np.diff(volts, 2)) / step if step else np.zeros(1)
+    several = (bends > 2.5) & (bends < 8.0)  # more is a jump
+    return noise_v(volts) > 0.7 * step or float(several.mean()) > 0.01
 
 
 def _closed(at: Mask) -> Mask:

@@ -190,6 +190,8 @@ def _check_named(args: argparse.Namespace, named: list[tuple[Path, Setting | Non
         refuse(args, "--range and --rotation are for captures without @RANGE:ROTATION")
     if len(named) > 1 and (None in settings or not marked):
         refuse(args, "several captures each need their setting: FILE@RANGE:ROTATION")
+    if args.volts_accuracy is not None and None in settings:
+        refuse(args, "--volts-accuracy is for a verdict, which needs --range and --rotation")
     if args.save is not None and None in settings:
         refuse(args, "--save needs to know where the controls stood: --range and --rotation")
 

@@ -34,6 +34,16 @@ def holds(fit, circuit=CIRCUIT, times=1.5):
     return all(abs(measured.value - truth) <= times * measured.u95 for measured, truth in pairs)
 
 
+@pytest.mark.parametrize("seed", range(12))
+@pytest.mark.parametrize("levels", [(0.02, 4.0), (0.0, 4.02), (4.0, 0.02), (-2.02, 3.0)])
+def test_a_level_that_lies_still_between_two_steps_is_not_clipped(levels, seed):
+    # Noise of a tenth of a step: a level on the border of two steps flickers, the other does not.
+    scope = Scope(800, 2e-3, -0.4, (0.004, 0.004), seed=seed)
+    capture = capture_of(generator=Generator(levels, (1e-3,)), scope=scope)
+    assert len(np.unique(capture.volts[0])) == 3
+    assert abs(fit_of(capture).time_constant_s.value / TAU - 1.0) < 0.02
+
+
 @pytest.mark.parametrize("order", [(0, 1), (1, 0)])
 @pytest.mark.parametrize("levels", [(0.0, 4.0), (4.0, 0.0), (-2.0, 3.0)])
 def test_either_order_and_direction(order, levels):

@@ -184,6 +184,7 @@ def test_a_bad_file_is_one_line(refused, tmp_path, what):
         (["c.csv", "--in", "CH9"], 1, "unknown channel 'CH9'; did you mean 'CH2'"),
         (["c.csv", "--in", "1", "--out", "CH1"], 1, "input and output are both 'CH1'"),
         (["c.csv", "--in", "CH2"], 1, "does not follow 'CH2' as a glide does"),
+        (["c.csv", "--volts-accuracy", "0.01"], 2, "which needs --range and --rotation"),
         (["c.csv", "--volts-accuracy", "3"], 1, "must be a fraction from 0 to 1 (3 % is 0.03)"),
         (["c.csv", "--volts-accuracy", "nan"], 1, "must be a fraction from 0 to 1"),
         (["c.csv", "--sample-interval", "0"], 1, "it must be more than 0"),
