@@ -162,6 +162,15 @@ class WholeFolder:
             raise
 
 
+def check_place(path: Path) -> None:
+    """Refuse a file that could not be written, before the work that would go into it.
+
+    Raises:
+        FileError: as `WholeFiles.temporary` does.
+    """
+    WholeFiles().temporary(path).unlink()
+
+
 def cannot_write(path: Path, error: OSError) -> FileError:
     """The one line for a file that the system would not let us write."""
     return FileError(f"{path}: cannot be written: {error.strerror or error}")

@@ -43,6 +43,7 @@ _UNIT_WORDS = {
     "second": ("s",),
     "": (),
 }
+_SUCH_AS = {"second": "2ms or 2.4s", "volt": "12 V or 500m", "ampere": "80n or 65p"}
 _PLAIN = re.compile(
     r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?\s*[pnuµμmkKMG]?\s*(Ω|Ω|ohms?|R|F|V|A|s)?",
     re.ASCII,
@@ -94,9 +95,10 @@ def _parse_text(text: str, unit: str, where: str) -> float:
         if not quantity.units:
             return float(quantity)
     hint = "; write a point, not a comma" if "," in stripped else ""
+    such_as = _SUCH_AS.get(unit, "4k7, 4.7k or 470n")
     raise InputError(
-        f"{where}: {text!r} is not a value"
-        f"{f' in {unit}s' if unit else ''}; write one such as 4k7, 4.7k or 470n{hint}"
+        f"{where}: {text!r} is not a value{f' in {unit}s' if unit else ''}; "
+        f"write one such as {such_as}{hint}"
     )
 
 
@@ -120,7 +122,7 @@ def format_value(number: float, unit: str = "", digits: int = 3) -> str:
     if math.isinf(number):
         return "none"
     rendered = Quantity(number, unit).render(prec=digits - 1, strip_zeros=True)
-    return rendered.replace("μ", "µ")
+    return re.sub(r"(?<=[\d ])u", "µ", rendered)
 
 
 def note_to_hz(note: Number) -> Number:

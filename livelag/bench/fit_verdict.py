@@ -114,6 +114,8 @@ def _suspect(
         )
     if key == "offset_v":
         return "a buffer's offset, its bias current through the pot, or the probes' zero"
+    if measured.value < 0.0:
+        return "the output is upside down: a channel is set to invert, or a buffer inverts"
     for factor in (10.0, 0.1):
         if abs(measured.value / limits.nominal / factor - 1.0) < 0.1:
             return (

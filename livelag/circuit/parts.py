@@ -26,7 +26,7 @@ from livelag.errors import InputError, UnknownNameError
 
 # Smallest and largest that a part may be; arithmetic beyond would overflow or mean nothing.
 OHMS = (1e-3, 1e12)
-FARADS = (1e-15, 1e3)
+FARADS = (1e-15, 1.0)
 INSULATION_OHMS = (1.0, 1e18)
 ABSORPTION_FRACTIONS = (1e-9, 1.0)
 ABSORPTION_TIMES_S = (1e-6, 1e6)

@@ -16,6 +16,7 @@ from livelag.circuit.parts import Buffer, Capacitor, Pot, Resistor, Taper
 from livelag.circuit.stage import GlideStage, Range, Scale, Supply
 from livelag.circuit.table import Table
 from livelag.errors import FileError, InputError, UnknownNameError
+from livelag.files import WholeFiles
 from livelag.units import format_value, parse_value
 
 DEFAULT_PRESET = "two-range-film"
@@ -265,16 +266,8 @@ def save_stage(stage: GlideStage, path: Path) -> None:
     Raises:
         FileError: if the file cannot be written.
     """
-    if path.is_dir() or not path.parent.is_dir():
-        raise FileError(f"{path}: cannot be written: it must be a file in a folder that exists")
-    temporary = path.with_name(f".{path.name}.part")
-    try:
-        temporary.write_text(stage_to_toml(stage), encoding="utf-8")
-        temporary.replace(path)
-    except OSError as error:
-        raise FileError(f"{path}: cannot be written: {error.strerror}") from error
-    finally:
-        temporary.unlink(missing_ok=True)
+    with WholeFiles() as files:
+        files.temporary(path).write_text(stage_to_toml(stage), encoding="utf-8")
 
 
 def stage_to_toml(stage: GlideStage) -> str:

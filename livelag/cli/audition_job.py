@@ -12,7 +12,8 @@ from livelag.circuit.stage import GlideStage, Setting
 from livelag.cli.audition import LEVEL_DBFS
 from livelag.cli.common import show_json, warn
 from livelag.cli.performance import check_method, parameters_from, player_settings_from
-from livelag.errors import DeviceError, InputError
+from livelag.errors import DeviceError, FileError, InputError
+from livelag.files import check_place
 from livelag.live.by_ear import free_stage
 from livelag.live.calibration import load_calibration
 from livelag.live.controllers import ControllerMap
@@ -31,6 +32,7 @@ from livelag.notes.phrases import phrase
 from livelag.notes.player import PlayerSettings
 from livelag.sound.patch import Patch
 from livelag.sound.render import check_rate
+from livelag.units import format_value
 
 EARS = "start quiet and protect your ears: a test oscillator is loud and steady"
 LEAST_LEAD_S = 0.3
@@ -43,6 +45,7 @@ def audition(args: argparse.Namespace, stage: GlideStage) -> None:
         LivelagError: if something asked for is not there, or the sound device goes away.
     """
     check_method(args.method)
+    _check_places(args)
     played = free_stage(stage) if args.by_ear else stage
     patch = Patch(
         played,
@@ -96,6 +99,19 @@ def audition(args: argparse.Namespace, stage: GlideStage) -> None:
             answer = _sum_up(args, session)
     if args.json:
         show_json(answer)
+
+
+def _check_places(args: argparse.Namespace) -> None:
+    """Refuse places for marks and takes before anything is played for them."""
+    if args.by_ear:
+        check_place(_marks_path(args))
+    takes = Path(args.takes)
+    if takes.exists() and not takes.is_dir():
+        raise FileError(f"{takes}: is a file; name a folder for the takes")
+
+
+def _marks_path(args: argparse.Namespace) -> Path:
+    return Path(args.marks or "marks.toml")
 
 
 def _place(patch: Patch) -> tuple[int, float]:
@@ -197,8 +213,8 @@ def _sum_up(args: argparse.Namespace, session: Session) -> dict[str, Any]:
     if desk.waveform_changed_in_take:
         say("the waveform or level changed during the last take; MIDI does not carry that")
     marks_file = _save_marks(args, desk, say)
-    if engine.meters.dropouts:
-        say(f"{engine.meters.dropouts} dropouts; a larger --block or --latency may help")
+    if missed := engine.meters.dropouts:
+        say(f"{missed} dropout{'s' * (missed > 1)}; a larger --block or --latency may help")
     return {
         "preset": args.preset,
         "seconds": engine.meters.frames / engine.rate_hz,
@@ -236,15 +252,21 @@ def _save_marks(args: argparse.Namespace, desk: Desk, say: Any) -> str | None:
     wrong = desk.marks_out_of_order()
     missing = [MARK_NAMES[n] for n in ("shortest", "longest") if n not in desk.marks]
     if missing or wrong:
-        found = ", ".join(f"{MARK_NAMES[n]} {s:.4g} s" for n, s in desk.marks.items())
+        found = ", ".join(f"{MARK_NAMES[n]} {format_value(s, 's')}" for n, s in desk.marks.items())
         reason = wrong or f"{' and '.join(missing)} not marked"
         say(f"marks not saved, {reason}: {found}")
         return None
-    path = Path(args.marks or "marks.toml")
+    path = _marks_path(args)
     from livelag.bench.marks import Marks
 
     marks = Marks(desk.marks["shortest"], desk.marks.get("handover"), desk.marks["longest"])
-    marks.save(path)
-    say(f"{path}: real parts for these times with:")
+    earlier = " (in place of earlier marks)" if path.exists() else ""
+    try:
+        marks.save(path)
+    except FileError:
+        times = " ".join(f"--{name} {value:.4g}" for name, value in desk.marks.items())
+        say(f"marks not saved; to go on with them all the same:\n  livelag parts {times}")
+        raise
+    say(f"{path}{earlier}: real parts for these times with:")
     say(f"  livelag parts --marks {path}")
     return str(path)

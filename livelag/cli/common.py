@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from livelag.circuit.stage import GlideStage
 
 DEFAULT_PRESET = "two-range-film"
+LEAST_WIDTH = 72
 
 
 def add_command(
@@ -89,7 +90,13 @@ def console() -> Console:
     from rich.console import Console
 
     if sys.stdout.isatty():
-        return Console(markup=False, emoji=False)
+        wide = Console(markup=False, emoji=False)
+        # A narrower table loses its numbers; a line that the terminal folds does not.
+        return (
+            wide
+            if wide.width >= LEAST_WIDTH
+            else Console(width=LEAST_WIDTH, markup=False, emoji=False)
+        )
     return Console(width=120, markup=False, emoji=False)
 
 

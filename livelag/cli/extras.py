@@ -40,7 +40,8 @@ def check_extras(args: argparse.Namespace) -> None:
 
     Raises:
         UnknownNameError: if the picture's suffix is none of those known.
-        InputError: if two name the same file, or one a file that the command reads.
+        InputError: if a suffix is wrong, two name the same file, or one a file that the command
+            reads.
     """
     if args.picture is not None:
         from livelag.report.figures import check_picture
@@ -52,6 +53,8 @@ def check_extras(args: argparse.Namespace) -> None:
         if same_file(name, same):
             raise InputError(f"{name}: --{one} and --{other} name the same file")
     keep_what_is_read(args)
+    if args.csv is not None and Path(args.csv).suffix.lower() != ".csv":
+        raise InputError(f"--csv is {args.csv!r}; its name must end in .csv")
 
 
 def same_file(one: str | Path, other: str | Path) -> bool:

@@ -104,9 +104,12 @@ def _drop_output() -> None:
 
 
 def _end_on_terminate() -> None:
-    """Let SIGTERM unwind like an interrupt, so that temporary files go."""
+    """Let SIGTERM and a closed terminal unwind like an interrupt, so that temporary files go."""
 
     def interrupt(number: int, frame: FrameType | None) -> None:
         raise KeyboardInterrupt
 
-    signal.signal(signal.SIGTERM, interrupt)
+    for name in ("SIGTERM", "SIGHUP"):
+        number = getattr(signal, name, None)
+        if number is not None and signal.getsignal(number) != signal.SIG_IGN:
+            signal.signal(number, interrupt)

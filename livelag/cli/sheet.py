@@ -72,8 +72,8 @@ def run(args: argparse.Namespace) -> None:
     out.print(_signals_table(sheet))
     low, high = sheet.levels.low_v, sheet.levels.high_v
     out.print(
-        f"Square wave from {low:.4g} V to {high:.4g} V, the pot at 1: the slow one lets every step "
-        "settle, the fast one none; what comes out\nof the fast one, peak to peak."
+        f"Square wave from {low:.4g} V to {high:.4g} V, the pot at 1: the settling one lets every "
+        "step settle, the hurried one none;\nwhat comes out of the hurried one, peak to peak."
     )
     out.print(_readings_table(sheet))
     out.print(
@@ -215,7 +215,7 @@ def _csv_rows(sheet: Sheet) -> Rows:
 def _signals_table(sheet: Sheet) -> Table:
     from livelag.report.sheet_words import hertz, seconds, volts_within
 
-    columns = ("range", "slow square", "each stair", "fast square", "out, peak to peak")
+    columns = ("range", "settling square", "each stair", "hurried square", "out, peak to peak")
     table = new_table(*columns, title=sheet.stage.title, right=columns[1:])
     for row in sheet.signals:
         table.add_row(

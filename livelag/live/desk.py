@@ -26,7 +26,7 @@ MAJOR_SCALE = (0, 2, 4, 5, 7, 9, 11, 12, 14, 16)
 FIRST_NOTE = 48
 OCTAVES = (-2, 3)
 TYPED_VELOCITY = 100
-MARK_NAMES = {"shortest": "shortest useful", "handover": "hand-over", "longest": "longest useful"}
+MARK_NAMES = {"shortest": "fastest useful", "handover": "hand-over", "longest": "slowest useful"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,7 +158,8 @@ class Desk:
     def _next_range(self) -> None:
         count = len(self.engine.patch.stage.ranges)
         if count == 1:
-            self.message = "this stage has one range"
+            by_ear = "by ear the pot has one range; h marks where two would meet"
+            self.message = by_ear if self.by_ear else "this stage has one range"
             return
         self._put(Setting((self.setting.range_index + 1) % count, self.setting.rotation))
         self._say_setting()
@@ -176,14 +177,14 @@ class Desk:
         self.waveform = names[(names.index(self.waveform) + 1) % len(names)]
         self.engine.post(Change("waveform", self.waveform))
         self.message = f"waveform {self.waveform}"
-        self.waveform_changed_in_take = self.recorder is not None
+        self.waveform_changed_in_take |= self.recorder is not None
 
     def _change_level(self, by_db: float) -> None:
         row = PARAMETERS["level"]
         self.level_dbfs = min(row.high, max(row.low, self.level_dbfs + by_db))
         self.engine.post(Change("level", self.level_dbfs))
         self.message = f"level {self.level_dbfs:.0f} dBFS"
-        self.waveform_changed_in_take = self.recorder is not None
+        self.waveform_changed_in_take |= self.recorder is not None
 
     # Comparing
 
@@ -263,6 +264,7 @@ class Desk:
         lost = recorder.feed.lost_frames
         if not kept:
             self.message = "nothing was recorded"
+            self.waveform_changed_in_take = False
         else:
             self.takes.append(recorder.path)
             self.message = f"{recorder.path}: {recorder.seconds:.1f} s" + (
@@ -290,7 +292,7 @@ class Desk:
         names = [name for name in MARK_NAMES if name in self.marks]
         for shorter, longer in pairwise(names):
             if not self.marks[shorter] < self.marks[longer]:
-                return f"{MARK_NAMES[shorter]} is not below {MARK_NAMES[longer]}: mark one again"
+                return f"{MARK_NAMES[shorter]} not below {MARK_NAMES[longer]}: mark one again"
         return ""
 
     # The rest
@@ -299,4 +301,8 @@ class Desk:
         self.help_shown = not self.help_shown
 
     def _quit(self) -> None:
+        wrong = self.marks_out_of_order()
+        if wrong and self.message != f"{wrong}, or q again":
+            self.message = f"{wrong}, or q again"
+            return
         self.quitting = True

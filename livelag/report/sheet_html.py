@@ -62,7 +62,8 @@ def _signals(sheet: Sheet) -> dict[str, Any]:
     return {
         "caption": f"Test signals, {stairs[0]:.4g} V to {stairs[-1]:.4g} V, the pot at 1",
         "header": (
-            "Range", "Slow square", "Each stair", "Fast square", "Out at fast, peak to peak",
+            "Range", "Settling square", "Each stair", "Hurried square",
+            "Out at hurried, peak to peak",
             *(f"Out after the stair of {v:.4g} V" for v in stairs),
         ),
         "rows": [

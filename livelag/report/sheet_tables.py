@@ -113,17 +113,17 @@ def draw_signals(page: Page, top: float, sheet: Sheet, row_mm: float) -> tuple[f
         f"Square wave {at.low_v:.4g} V to {at.high_v:.4g} V: {at.high_v - at.low_v:.4g} V peak to "
         f"peak, offset {(at.high_v + at.low_v) / 2:.4g} V. Staircase {stairs} V, then down to "
         f"{at.low_v:.4g} V.",
-        f"Slow, the pot at 1: each level lasts {SETTLED} time constants of the slowest build or "
-        "more, so a step comes to within 0.1 % (absorption and bleed creep on). Fast, the pot at "
-        f"1: a level lasts {HURRIED:g} time constant of the fastest build or less; it cannot "
-        "settle.",
+        f"Settling, the pot at 1: each level lasts {SETTLED} time constants of the slowest build "
+        "or more, so a step comes to within 0.1 % (absorption and bleed creep on). Hurried, the "
+        f"pot at 1: a level lasts {HURRIED:g} time constant of the fastest build or less; it "
+        "cannot settle.",
     )
     for words in lines:
         top = page.paragraph(page.left, top, page.right - page.left, words, 7.0)
     span = page.right - page.left
     columns = (
-        Column("Range", span - 134.0), Column("Slow square", 22.0), Column("Each stair", 20.0),
-        Column("Fast square", 22.0), Column("Out at fast, peak to peak", 44.0),
+        Column("Range", span - 134.0), Column("Settling square", 22.0), Column("Each stair", 20.0),
+        Column("Hurried square", 22.0), Column("Out at hurried, peak to peak", 44.0),
         Column("Measured", 26.0, True),
     )  # fmt: skip
     rows = [

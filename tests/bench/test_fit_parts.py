@@ -176,6 +176,7 @@ def test_gain_and_offset_allow_for_the_oscilloscope():
 
 def test_a_probe_set_otherwise_is_recognised():
     assert "set to x10" in said(GOOD, scale=0.1)["gain"].suspect
+    assert "upside down" in said(GOOD, scale=-1.0)["gain"].suspect
 
 
 def test_judge():

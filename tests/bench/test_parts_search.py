@@ -211,7 +211,7 @@ def test_ideal_values_reach_the_error_of_one_pot():
     [
         (
             wishes_from(2e-3, [0.03], 2.4, connections=("added", "exchanged")),
-            "one pot gives every range the same ratio: move shortest from 2 ms to 375 us or "
+            "one pot gives every range the same ratio: move shortest from 2 ms to 375 µs or "
             "handover from 30 ms to 69.3 ms or longest from 2.4 s to 450 ms, or allow the "
             "connection series-switched, or allow errors of a factor of 1.6",
         ),

@@ -180,7 +180,7 @@ def test_deviation_is_what_is_left_to_go(case, data):
 
 
 @pytest.mark.parametrize("kind", ["ideal", "polyester", "tantalum"])
-@pytest.mark.parametrize("farads", [1e-9, 1.0, 1e3])
+@pytest.mark.parametrize("farads", [1e-9, 1e-3, 1.0])
 def test_parts_many_decades_apart_stay_finite(kind, farads):
     stage = GlideStage(
         title="extremes",

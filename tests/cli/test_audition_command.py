@@ -41,9 +41,13 @@ def test_options_that_do_not_apply_are_a_wrong_command_line(livelag, options, me
         (("--midi", "nosuch.mid"), "nosuch.mid"),
         (("--pot-cc", "64"), "pot_controller is 64"),
         (("--pot-cc", "7", "--range-cc", "7"), "range_controller is 7"),
+        (("--by-ear", "--marks", "gone/m.toml"), "gone/m.toml: folder 'gone' does not exist"),
+        (("--by-ear", "--marks", "."), ".: is a folder; name a file"),
+        (("--takes", "taken"), "taken: is a file; name a folder for the takes"),
     ],
 )
-def test_bad_input_is_one_line_before_anything_sounds(livelag, options, message):
+def test_bad_input_is_one_line_before_anything_sounds(livelag, tmp_path, options, message):
+    (tmp_path / "taken").write_text("")
     answer = livelag("audition", *options)
     assert answer.status == 1
     (line,) = answer.err.splitlines()

@@ -15,6 +15,7 @@ import scipy.signal
 import soundfile
 from audition_process import Audition
 
+from livelag.bench.marks import Marks
 from livelag.circuit.presets import load_stage
 from livelag.circuit.stage import Setting
 from livelag.cli.main import run
@@ -279,7 +280,7 @@ def test_a_take_renders_again_to_the_same_samples(jack_server, audition, tmp_pat
     assert {5, 37, 65, 80} <= controls
 
 
-@pytest.mark.parametrize("how", ["SIGINT", "SIGTERM"])
+@pytest.mark.parametrize("how", ["SIGINT", "SIGTERM", "SIGHUP"])
 def test_a_take_is_valid_after(jack_server, audition, tmp_path, how):
 
     server = jack_server()
@@ -300,14 +301,15 @@ def test_a_take_is_valid_after(jack_server, audition, tmp_path, how):
 def test_marks_by_ear_become_a_file(jack_server, audition, tmp_path):
     server = jack_server()
     playing = audition(server, "two-range-film", "--by-ear", "--rotation", 0.2, midi=False)
-    for keys in ("f", ">>", "h", ">>>", "s"):
+    for keys in ("f", ">>", "h", ">>>", "s", "f", "q"):
         playing.type(keys)
         time.sleep(0.4)
+    assert playing.process.poll() is None  # marks out of order: it asks once
+    playing.type("<<<<<f")
+    time.sleep(0.4)
     answer = playing.leave()
     assert answer["marks"] == "marks.toml"
     assert any("livelag parts --marks marks.toml" in line for line in playing.said)
-    from livelag.bench.marks import Marks
-
     marks = Marks.load(tmp_path / "marks.toml")
     assert marks.shortest_s == pytest.approx(0.5e-3 * 20000**0.2, rel=1e-3)
     assert marks.handover_s == pytest.approx(0.5e-3 * 20000**0.4, rel=1e-3)
@@ -355,3 +357,16 @@ def test_the_panel_leaves_a_clean_terminal_when_the_server_dies(jack_server, ter
     assert "went away" in text
     assert "Traceback" not in text
     screen.assert_clean()
+
+
+def test_a_closed_terminal_keeps_the_marks(jack_server, audition, tmp_path):
+    server = jack_server()
+    (tmp_path / "marks.toml").write_text("earlier")
+    playing = audition(server, "two-range-film", "--by-ear", "--rotation", 0.2, midi=False)
+    for keys in ("f", ">>>", "s"):
+        playing.type(keys)
+        time.sleep(0.4)
+    playing.process.send_signal(signal.SIGHUP)
+    playing.answer()
+    assert Marks.load(tmp_path / "marks.toml").handover_s is None
+    assert any("in place of earlier marks" in line for line in playing.said)
