@@ -122,8 +122,8 @@ def draw_signals(page: Page, top: float, sheet: Sheet, row_mm: float) -> tuple[f
         top = page.paragraph(page.left, top, page.right - page.left, words, 7.0)
     span = page.right - page.left
     columns = (
-        Column("Range", span - 134.0), Column("Settling square", 22.0), Column("Each stair", 20.0),
-        Column("Hurried square", 22.0), Column("Out at hurried, peak to peak", 44.0),
+        Column("Range", span - 142.0), Column("Settling square", 27.0), Column("Each stair", 20.0),
+        Column("Hurried square", 25.0), Column("Out at hurried, peak to peak", 44.0),
         Column("Measured", 26.0, True),
     )  # fmt: skip
     rows = [

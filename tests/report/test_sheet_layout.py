@@ -64,6 +64,15 @@ def test_no_two_texts_overlap(pages):
             assert across < TOUCH_MM or down < TOUCH_MM, (one.get_text(), other.get_text())
 
 
+def test_no_heading_is_shortened(pages):
+    """A long name may be; what the sheet itself says may not."""
+    _, drawn = pages
+    texts = [text.get_text() for figure in drawn for text, _ in boxes(figure)]
+    assert "Settling square" in texts
+    assert "Hurried square" in texts
+    assert "Out at hurried, peak to peak" in texts
+
+
 def test_all_text_is_inside_the_margins(pages):
     paper, drawn = pages
     width, height = PAPERS_MM[paper]
