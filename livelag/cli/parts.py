@@ -18,6 +18,11 @@ if TYPE_CHECKING:
 _EXAMPLE = (
     "livelag parts --shortest 2ms --handover 70ms --longest 2.4s --overlap 2 --save ours.toml"
 )
+_SCORE = """
+Every combination counts as tried: what is left out unseen cannot score less. A point
+of score, less is better, is 5 % of time (root mean square over all ends; shown is the
+worst), a cent of tuning at the slowest setting (insulation over an octave, bias at its
+limit), a part more, or 5 mA of drive beyond 5 at the peak of a five-octave leap."""
 
 
 def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
@@ -25,6 +30,7 @@ def add_to(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> Non
     parser = add_command(
         commands, "parts", "real part values for ranges picked by ear", _EXAMPLE
     )  # fmt: skip
+    parser.description = f"{parser.description}\n{_SCORE}"
     _add_wishes(parser.add_argument_group("wishes, all of them time constants"))
     _add_stock(parser.add_argument_group("what to build with"))
     shown = parser.add_argument_group("what to show and write")

@@ -22,11 +22,8 @@ NEAR_ENOUGH = 0.01  # an error of one pot that is lost among those of real value
 
 
 _LEGEND = (
-    "Time constants. The best of {:,} combinations, proven: what was left out unseen cannot score "
-    "less. A point of score, less is better: 5 % of time (root mean square over all ends; shown is "
-    "the worst), a cent of tuning at the slowest setting (insulation over an octave, bias at its "
-    "limit), a part more, 5 mA of drive beyond 5 at the peak of a five-octave leap. Star: whatever "
-    "is better in one of these is worse in another."
+    "Time constants; the best of {:,} combinations, proven. The least score is best (parts --help); "
+    "*: none is better in all."
 )
 
 
@@ -45,6 +42,7 @@ def show_parts(
     chosen = result.candidates[choice - 1]
     built = choice_spread(stage, wishes)
     out.print(_choice_table(chosen, built, choice))
+    out.print("Both ends of each range, and where random builds within the tolerances fall.")
     out.print(parts_sentence(chosen))
     polarised = [c.name for c in stage.capacitors if c.kind_data.polarised]
     if polarised:
