@@ -22,7 +22,7 @@ NEAR_ENOUGH = 0.01  # an error of one pot that is lost among those of real value
 
 
 _LEGEND = (
-    "Time constants; the best of {:,} combinations, proven. The least score is best (parts --help); "
+    "Time constants; the best of {:,}, proven; less score is better (parts --help); "
     "*: none is better in all."
 )
 
