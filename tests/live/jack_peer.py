@@ -39,7 +39,7 @@ from pathlib import Path
 import jack
 import numpy as np
 
-STALL_S = 0.001
+STALL_S = 0.003
 
 
 class CycleTimes:
