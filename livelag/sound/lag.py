@@ -57,6 +57,8 @@ class _Filters:
         b1: weight of the source at the frame before.
         state_scale: d per unit of the documented state.
         settled: y_inf per volt of source.
+        readout: what each mode adds to the bus.
+        bus_per_volt: the settled bus per volt of source.
         powers: (driven, 1, _SHORT) p^0 to p^(_SHORT - 1).
         leaps: (driven, _SHORT, 1) p^0, p^_SHORT and so on below p^_ROW.
         silent_poles: (silent,) poles in 1/s that only leak.
@@ -68,6 +70,8 @@ class _Filters:
     b1: Vector
     state_scale: Vector
     settled: Vector
+    readout: Vector
+    bus_per_volt: float
     powers: NDArray[np.float64]
     leaps: NDArray[np.float64]
     silent_poles: Vector
@@ -82,7 +86,7 @@ class _Run:
         source: what it is worth as a source.
         deviation: (driven,) y[0] - y_inf of equation 4.
         settled_bus: the bus once all has settled.
-        decays: per mode that the bus shows, its weight there at frame 0, p, and its number.
+        decays: per mode that the bus shows, its number, its weight there at frame 0, and p.
         frames: how long it has been held.
         rows: (driven, _ROW) powers of p, once a long stretch has asked for them.
     """
@@ -91,7 +95,7 @@ class _Run:
     source: float
     deviation: Vector
     settled_bus: float
-    decays: tuple[tuple[float, float, int], ...]
+    decays: tuple[tuple[int, float, float], ...]
     frames: int = 0
     rows: NDArray[np.float64] | None = None
 
@@ -180,13 +184,16 @@ class Lag:
         p, b0, b1, scale = _coefficients(self.method, poles, self._step_s)
         powers = _powers(p)
         leaps = _powers(powers[:, -1] * p)
+        settled = -drive / poles
         return _Filters(
             network=network,
             poles=p,
             b0=b0 * drive,
             b1=b1 * drive,
             state_scale=scale,
-            settled=-drive / poles,
+            settled=settled,
+            readout=network.readout[:n],
+            bus_per_volt=float(network.readout[:n] @ settled) + network.feedthrough,
             powers=powers[:, np.newaxis, :],
             leaps=leaps[:, :, np.newaxis],
             silent_poles=network.poles[n:],
@@ -260,41 +267,41 @@ class Lag:
             row, start = divmod(run.frames + done, _ROW)
             count = min(_ROW - start, frames - done)
             part = bus[done : done + count]
-            for weight, pole, mode in run.decays:
-                weight *= pole ** (row * _ROW)
-                if abs(weight) > _NOTHING_V:
-                    part += weight * self._powers_of(run, mode, start, count)
+            weights = [(mode, weight * pole ** (row * _ROW)) for mode, weight, pole in run.decays]
+            weights = [(mode, weight) for mode, weight in weights if abs(weight) > _NOTHING_V]
+            if weights:
+                powers = self._powers_of(run, start, count)
+                for mode, weight in weights:
+                    part += weight * powers[mode]
             done += count
         run.frames += frames
         self._frames_since += frames
         return self.stage.output_volts(bus)
 
-    def _powers_of(self, run: _Run, mode: int, start: int, count: int) -> Vector:
-        """(count,) p^start and on; a long stretch pays for the whole row, a short one does not."""
+    def _powers_of(self, run: _Run, start: int, count: int) -> NDArray[np.float64]:
+        """(driven, count) p^start and on; a long stretch pays for a whole row, a short one not."""
         leaps, powers = self._filters.leaps, self._filters.powers
         if count >= _LONG:
             if run.rows is None:
                 run.rows = (leaps * powers).reshape(len(leaps), _ROW)
-            return run.rows[mode, start : start + count]
+            return run.rows[:, start : start + count]
         first, last = start // _SHORT, (start + count - 1) // _SHORT + 1
         begin = start - first * _SHORT
-        stretch: Vector = (leaps[mode, first:last] * powers[mode]).ravel()[begin : begin + count]
-        return stretch
+        stretch: NDArray[np.float64] = leaps[:, first:last] * powers
+        return stretch.reshape(len(leaps), -1)[:, begin : begin + count]
 
     def _begin_run(self, key_volts: float) -> _Run:
         self._end_run()
         filters = self._filters
-        network, n = filters.network, filters.network.driven_count
         source = self._source = float(self.stage.source_volts(key_volts, self.setting))
         deviation = self._delay + filters.b0 * source - filters.settled * source
-        per_volt = float(network.readout[:n] @ filters.settled) + network.feedthrough
-        weights = network.readout[:n] * deviation
+        weights = (filters.readout * deviation).tolist()
         decays = tuple(
-            (float(weight), float(pole), mode)
-            for mode, (weight, pole) in enumerate(zip(weights, filters.poles, strict=True))
+            (mode, weight, pole)
+            for mode, (weight, pole) in enumerate(zip(weights, filters.poles.tolist(), strict=True))
             if weight
         )
-        self._run = _Run(key_volts, source, deviation, per_volt * source, decays)
+        self._run = _Run(key_volts, source, deviation, filters.bus_per_volt * source, decays)
         return self._run
 
     def process(self, key_volts: NDArray[np.float64]) -> NDArray[np.float64]:
