@@ -43,14 +43,16 @@ def in_parallel(function: Callable[..., Answer], tasks: Sequence[tuple[Any, ...]
 
 @contextmanager
 def _stop_afterwards() -> Iterator[None]:
-    """Put off Ctrl-C and SIGTERM, so that no process is lost while it is being started.
+    """Put off Ctrl-C, SIGTERM and SIGHUP, so that no process is lost while it is being started.
 
     The processes inherit the blocked Ctrl-C and leave it to their parent.
     """
     asked: list[int] = []
     ours = {
         number: signal.signal(number, lambda number, frame: asked.append(number))
-        for number in (signal.SIGINT, signal.SIGTERM)
+        for name in ("SIGINT", "SIGTERM", "SIGHUP")
+        if (number := getattr(signal, name, None)) is not None
+        and signal.getsignal(number) != signal.SIG_IGN
     }
     if hasattr(signal, "pthread_sigmask"):
         signal.pthread_sigmask(signal.SIG_BLOCK, [signal.SIGINT])
