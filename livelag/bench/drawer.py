@@ -21,7 +21,6 @@ is not given is one; a tolerance that is not given is the usual one.
 from __future__ import annotations
 
 import csv
-import tomllib
 from collections.abc import Callable, Iterable, Sequence
 from pathlib import Path
 from typing import Any
@@ -106,13 +105,7 @@ Rows = list[tuple[str, Table]]
 
 
 def _toml_rows(text: str, path: Path) -> Rows:
-    try:
-        content = tomllib.loads(text)
-    except RecursionError:
-        raise InputError(f"{path}: not a drawer: nested too deeply") from None
-    except ValueError as error:
-        raise InputError(f"{path}: not TOML: {' '.join(str(error).split())}") from error
-    top = Table(content, str(path))
+    top = Table.parse(text, str(path), "a drawer")
     rows = [(part, row) for part in _MAKERS for row in top.tables(part)]
     top.finish()
     return rows

@@ -219,8 +219,7 @@ def _step(
 
 def _shown(corner: GlideStage, setting: Setting) -> tuple[float, float]:
     resistance = corner.resistance_ohms(setting)
-    connects = corner.ranges[setting.range_index].connects
-    on_bus = [part for part in corner.capacitors if part.name in connects]
+    on_bus = corner.connected(setting.range_index)
     leak = sum(part.leakage_siemens for part in on_bus)
     if corner.bleed is not None:
         leak += (len(corner.capacitors) - len(on_bus)) / corner.bleed.resistance_ohms

@@ -6,7 +6,6 @@ Reading asks for every key once and refuses any other (see `livelag.circuit.tabl
 from __future__ import annotations
 
 import os
-import tomllib
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -81,13 +80,7 @@ def parse_stage(text: str, where: str) -> GlideStage:
         InputError: if it is not TOML or does not describe a stage; the message names the key.
         UnknownNameError: if it names a part class, taper or capacitor that does not exist.
     """
-    try:
-        content = tomllib.loads(text)
-    except RecursionError:
-        raise InputError(f"{where}: not a preset: nested too deeply") from None
-    except ValueError as error:  # tomllib's own, and a whole number of thousands of digits
-        raise InputError(f"{where}: not TOML: {' '.join(str(error).split())}") from error
-    return _stage(Table(content, where))
+    return _stage(Table.parse(text, where, "a preset"))
 
 
 def _stage(top: Table) -> GlideStage:

@@ -233,10 +233,14 @@ class GlideStage:
         series = self.ranges[setting.range_index].series or self.series
         return series.resistance_ohms + self.pot.resistance_at(setting.rotation)
 
+    def connected(self, range_index: int) -> tuple[Capacitor, ...]:
+        """The capacitors that a range connects."""
+        connects = self.ranges[range_index].connects
+        return tuple(part for part in self.capacitors if part.name in connects)
+
     def capacitance_f(self, range_index: int) -> float:
         """C: sum of the capacitors that a range connects."""
-        connects = self.ranges[range_index].connects
-        return sum(c.capacitance_f for c in self.capacitors if c.name in connects)
+        return sum(part.capacitance_f for part in self.connected(range_index))
 
     def time_constant_s(self, setting: Setting) -> float:
         """R C in seconds, absorption and leakage aside."""

@@ -5,6 +5,7 @@ Messages name the file and the dotted key, so that one line is enough to mend th
 
 from __future__ import annotations
 
+import tomllib
 from collections.abc import Callable
 from difflib import get_close_matches
 from typing import Any, TypeVar
@@ -23,6 +24,21 @@ class Table:
         self._file = file
         self._path = path
         self._asked: list[str] = []
+
+    @classmethod
+    def parse(cls, text: str, file: str, what: str) -> Table:
+        """The top table of a TOML text; ``what`` it should be, and ``file``, go into messages.
+
+        Raises:
+            InputError: if it is not TOML.
+        """
+        try:
+            content = tomllib.loads(text)
+        except RecursionError:
+            raise InputError(f"{file}: not {what}: nested too deeply") from None
+        except ValueError as error:  # tomllib's own, and a whole number of thousands of digits
+            raise InputError(f"{file}: not TOML: {' '.join(str(error).split())}") from error
+        return cls(content, file)
 
     def __contains__(self, key: str) -> bool:
         self._asked.append(key)

@@ -90,13 +90,10 @@ def console() -> Console:
     from rich.console import Console
 
     if sys.stdout.isatty():
-        wide = Console(markup=False, emoji=False)
+        shown = Console(markup=False, emoji=False)
         # A narrower table loses its numbers; a line that the terminal folds does not.
-        return (
-            wide
-            if wide.width >= LEAST_WIDTH
-            else Console(width=LEAST_WIDTH, markup=False, emoji=False)
-        )
+        shown.width = max(shown.width, LEAST_WIDTH)
+        return shown
     return Console(width=120, markup=False, emoji=False)
 
 

@@ -55,6 +55,9 @@ def check_extras(args: argparse.Namespace) -> None:
     keep_what_is_read(args)
     if args.csv is not None and Path(args.csv).suffix.lower() != ".csv":
         raise InputError(f"--csv is {args.csv!r}; its name must end in .csv")
+    save = vars(args).get("save")
+    if save is not None and Path(save).suffix != ".toml":
+        raise InputError(f"--save is {save!r}; a preset is a .toml file")
 
 
 def same_file(one: str | Path, other: str | Path) -> bool:

@@ -79,8 +79,6 @@ def run(args: argparse.Namespace) -> None:
         InputError: if an option has a value it cannot take, or a capture cannot tell.
     """
     check_extras(args)
-    if args.save is not None and Path(args.save).suffix != ".toml":
-        raise InputError(f"--save is {args.save!r}; a preset is a .toml file")
     interval_s = _interval(args)
     accuracy = _accuracy(args)
     from livelag.circuit.presets import load_stage

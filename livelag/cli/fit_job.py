@@ -3,9 +3,6 @@
 from __future__ import annotations
 
 import argparse
-import sys
-from collections.abc import Callable, Iterator
-from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -25,6 +22,7 @@ from livelag.bench.fit_verdict import OUTSIDE, Line, judge, verdict
 from livelag.bench.limits import Limits
 from livelag.circuit.kinds import Absorption
 from livelag.circuit.stage import GlideStage, Setting
+from livelag.cli.progress import progress_bar
 
 _LONG_BYTES = 20_000_000
 
@@ -126,8 +124,7 @@ def as_built(stage: GlideStage, found: Found, accuracy: float) -> GlideStage:
 
 def _expected(stage: GlideStage, setting: Setting | None) -> tuple[Absorption, ...]:
     """Branches of a range's capacitors, as shares of its capacitance; the first if not said."""
-    position = stage.ranges[0 if setting is None else setting.range_index]
-    parts = [part for part in stage.capacitors if part.name in position.connects]
+    parts = stage.connected(0 if setting is None else setting.range_index)
     whole = sum(part.capacitance_f for part in parts)
     return tuple(
         Absorption(branch.fraction * part.capacitance_f / whole, branch.time_s)
@@ -237,21 +234,7 @@ def _capture_answer(one: Judged) -> dict[str, Any]:
 
 
 def _read(path: Path, interval_s: float | None, quiet: bool) -> Capture:
-    with _progress(path, quiet) as progress:
+    size = path.stat().st_size if path.is_file() else 0
+    show = not quiet and size > _LONG_BYTES
+    with progress_bar(f"reading {path.name}", size, show=show, size_in_bytes=True) as progress:
         return read_capture(path, interval_s, progress)
-
-
-@contextmanager
-def _progress(path: Path, quiet: bool) -> Iterator[Callable[[int], None]]:
-    """A progress bar on a terminal for files that take a while."""
-    long = path.is_file() and path.stat().st_size > _LONG_BYTES
-    if quiet or not long or not sys.stderr.isatty():
-        yield lambda done: None
-        return
-    from rich.console import Console
-    from rich.progress import BarColumn, DownloadColumn, Progress, TextColumn
-
-    columns = (TextColumn("reading {task.description}"), BarColumn(), DownloadColumn())
-    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task(path.name, total=path.stat().st_size)
-        yield lambda done: bar.update(task, completed=done)

@@ -105,8 +105,6 @@ def run(args: argparse.Namespace) -> None:
     """
     _check_options(args)
     check_extras(args)
-    if args.save is not None and Path(args.save).suffix != ".toml":
-        raise InputError(f"--save is {args.save!r}; a preset is a .toml file")
     wishes = _wishes(args)
     if wishes.ranges == 1:
         for name in ("overlap", "connect"):

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from livelag.circuit.stage import GlideStage, Setting
 from livelag.cli.performance import check_method, parameters_from
+from livelag.cli.progress import progress_bar
 from livelag.cli.render import LEVEL_DBFS
 from livelag.cli.song_options import read_song, song_player_settings
 from livelag.errors import InputError, UnknownNameError
@@ -178,7 +179,7 @@ class RenderJob:
                 picture_file = files.temporary(picture)
                 curve = CurveForPicture(self.rate_hz, frames)
                 sinks.append(curve)
-            with _progress(frames, show_progress) as progress:
+            with progress_bar("rendering", frames, show=show_progress) as progress:
                 done = render(patch, self.song.messages, frames, self.rate_hz, sinks, progress)
             if curve is not None:
                 self._draw(curve.curve, picture_file)
@@ -272,28 +273,3 @@ def _refuse_same_file(paths: list[Path]) -> None:
         if (real := os.path.realpath(path)) in seen:
             raise InputError(f"{path}: is named for two outputs; give each a file of its own")
         seen.add(real)
-
-
-class _progress:  # noqa: N801 - used like a function
-    """A progress bar on a terminal, nothing where nobody watches."""
-
-    def __init__(self, frames: int, show: bool) -> None:
-        import sys
-
-        self._frames = frames
-        self._show = show and sys.stderr.isatty()
-
-    def __enter__(self) -> Any:
-        if not self._show:
-            return lambda done: None
-        from rich.console import Console
-        from rich.progress import Progress
-
-        self._bar = Progress(console=Console(stderr=True), transient=True)
-        task = self._bar.add_task("rendering", total=self._frames)
-        self._bar.start()
-        return lambda done: self._bar.update(task, completed=done)
-
-    def __exit__(self, *error: object) -> None:
-        if self._show:
-            self._bar.stop()

@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import argparse
-from contextlib import contextmanager
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from livelag.cli.common import (
@@ -18,10 +16,11 @@ from livelag.cli.common import (
     show_json,
 )
 from livelag.cli.extras import Rows, add_extras, check_extras, show_written, write_extras
+from livelag.cli.progress import progress_bar
 from livelag.errors import InputError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
+    from collections.abc import Iterator
 
     from rich.table import Table
 
@@ -81,15 +80,14 @@ def run(args: argparse.Namespace) -> None:
         raise InputError(
             f"--csv with {builds} builds is too long a file; {MOST_CSV_BUILDS} is the most"
         )
-    if args.save is not None and Path(args.save).suffix != ".toml":
-        raise InputError(f"--save is {args.save!r}; a preset is a .toml file")
     stage = load_preset(args)
     from livelag.bench.spread import build_stage, spread
 
     chosen = None
     if args.build is not None:
         chosen = build_stage(stage, args.build, builds, seed, distribution)
-    with _progress(builds, not args.json) as progress:
+    show = not args.json and builds > MOST_CSV_BUILDS  # fewer are done at once
+    with progress_bar("drawing builds", builds, show=show) as progress:
         result = spread(stage, builds, seed, distribution, progress)
 
     def draw() -> Any:
@@ -238,19 +236,3 @@ def _blame_table(stage: GlideStage, result: SpreadResult) -> Table:
     for part in ends[0].blame or next(row.blame for row in ends if row.blame):
         table.add_row(part, *(f"{100 * row.blame.get(part, 0.0):.1f} %" for row in ends))
     return table
-
-
-@contextmanager
-def _progress(builds: int, show: bool) -> Iterator[Callable[[int], None]]:
-    """A progress bar on a terminal for draws that take a while."""
-    import sys
-
-    if not (show and sys.stderr.isatty() and builds > MOST_CSV_BUILDS):
-        yield lambda done: None
-        return
-    from rich.console import Console
-    from rich.progress import Progress
-
-    with Progress(console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task("drawing builds", total=builds)
-        yield lambda done: bar.update(task, completed=done)
