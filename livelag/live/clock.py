@@ -21,9 +21,40 @@ from livelag.errors import InputError
 BANDWIDTH_HZ = 0.1
 #: While the loop is young its bandwidth falls as 1/age, which is close to a least-squares line.
 _START_AGE = 16
+_YOUNG_AGE = 64
 _MAX_DRIFT = 0.005
-#: So many callbacks in a row, all off to the same side, are a dropout and not noise.
-_RELOCK_AFTER = 4
+#: So many callbacks in a row, all off to the same side by most of a block, are a dropout.
+_DROPOUT_AFTER = 4
+#: So many, all off to the same side by more than the usual noise, are a sound system that began
+#: its time anew after a stall: that shifts it by any part of a block.
+_SHIFT_AFTER = 16
+_NOISE_OVER_S = 1.0
+
+
+class _Row:
+    """Errors in a row that are all off to the same side by more than a limit."""
+
+    def __init__(self) -> None:
+        self.count = 0
+        self._sum_s = 0.0
+
+    @property
+    def mean_s(self) -> float:
+        return self._sum_s / self.count
+
+    def add(self, error_s: float, limit_s: float) -> int:
+        """Take in an error; the length of the row that it ends, or 0."""
+        if abs(error_s) <= limit_s:
+            self.clear()
+            return 0
+        if (error_s > 0) != (self._sum_s > 0):
+            self.clear()
+        self.count += 1
+        self._sum_s += error_s
+        return self.count
+
+    def clear(self) -> None:
+        self.count, self._sum_s = 0, 0.0
 
 
 class DelayLockedClock:
@@ -57,8 +88,8 @@ class DelayLockedClock:
         self._frames = 0
         self._time = math.nan  # filtered time of frame `_frames`
         self._age = self._slope_age = 0
-        self._off_count = 0
-        self._off_sum = 0.0
+        self._noise_s = 0.0  # mean size of the errors of late
+        self._dropout, self._shift = _Row(), _Row()
 
     @property
     def rate_hz(self) -> float:
@@ -80,18 +111,20 @@ class DelayLockedClock:
             self._lock(frames, now_s)
             return
         # A dropout shifts every later callback by at least most of a block; noise does not.
-        limit = 0.6 * block_s + 0.0005
-        if abs(error) > limit:
-            if self._off_count and (error > 0) != (self._off_sum > 0):
-                self._off_count, self._off_sum = 0, 0.0
-            self._off_count += 1
-            self._off_sum += error
-            if self._off_count >= _RELOCK_AFTER:
-                self._lock(frames, predicted + self._off_sum / self._off_count)
-                return
+        off = self._dropout.add(error, 0.6 * block_s + 0.0005)
+        if off >= _DROPOUT_AFTER:
+            self._lock(frames, predicted + self._dropout.mean_s)
+            return
+        usual_s = 1.5 * self._noise_s + 2e-5
+        if self._shift.add(error, usual_s) >= _SHIFT_AFTER:
+            self._lock(frames, predicted + self._shift.mean_s)
+            return
+        if off:
             error = 0.0  # until it is known which it is, coast
         else:
-            self._off_count, self._off_sum = 0, 0.0
+            self._noise_s += min(block_s / _NOISE_OVER_S, 1.0) * (abs(error) - self._noise_s)
+            if self._age > _YOUNG_AGE:  # a callback that is very late says little
+                error = min(max(error, -usual_s), usual_s)
         self._age += 1
         self._slope_age += 1
         omega = self._omega(block_s, self._age)
@@ -130,4 +163,5 @@ class DelayLockedClock:
         self._frames, self._time = frames, time_s
         self._age = _START_AGE
         self._slope_age = max(self._slope_age, _START_AGE)
-        self._off_count, self._off_sum = 0, 0.0
+        self._dropout.clear()
+        self._shift.clear()

@@ -5,7 +5,17 @@ import warnings
 import pytest
 from jack_server import PeerProcess, Server, why_not
 from needed import require
+from stolen_time import run_until_unspoilt
 from tmux_terminal import Terminal, why_no_tmux
+
+
+def pytest_runtest_protocol(item, nextitem):
+    """Runs each test as usual, but see `stolen_time`."""
+    item.ihook.pytest_runtest_logstart(nodeid=item.nodeid, location=item.location)
+    for report in run_until_unspoilt(item, nextitem):
+        item.ihook.pytest_runtest_logreport(report=report)
+    item.ihook.pytest_runtest_logfinish(nodeid=item.nodeid, location=item.location)
+    return True
 
 
 @pytest.fixture

@@ -20,17 +20,12 @@ PLAN keys, all but `name` optional:
     record_from audio output ports, likewise, one recorded channel for each match
     out         where to write the recording: float32, shape (frames, channels)
 
-"done" holds `start_frame` and `start_s`, `xruns`, `lost_blocks` (plan frames the server skipped;
-the recording has zeros there), `stalls` (plan frames at which the server was more than STALL_S
-late or had skipped; its own clock needs a while to settle after one) and `events`: for each
-[frame, ideal seconds, handed-over seconds].
-The ideal is the frame's time on JACK's own clock, CLOCK_MONOTONIC_RAW smoothed by a loop, and
-good for differences only. Handed over is when this client was done with the cycle, which sets off
-the clients that listen to it, on time.perf_counter's clock, and good for any process here.
+"done" holds `start_frame`, `xruns`, `lost_blocks` (how many the server skipped; the recording has
+zeros there), `cycles`: for each [frame, entered seconds], and `events`: for each [frame,
+handed-over seconds]. Handed over is when this client was done with the cycle, which sets off the
+clients that listen to it. Seconds are time.perf_counter's, good for any process here.
 """
 
-import ctypes
-import ctypes.util
 import json
 import sys
 import time
@@ -38,31 +33,6 @@ from pathlib import Path
 
 import jack
 import numpy as np
-
-STALL_S = 0.003
-
-
-class CycleTimes:
-    """jack_get_cycle_times, which JACK-Client leaves out: microseconds of its own clock."""
-
-    def __init__(self, client):
-        library = ctypes.CDLL(ctypes.util.find_library("jack"))
-        self._call = library.jack_get_cycle_times
-        self._client = ctypes.c_void_p(int(jack._ffi.cast("uintptr_t", client._ptr)))
-        self._frames = ctypes.c_uint32()
-        self._now, self._next = ctypes.c_uint64(), ctypes.c_uint64()
-        self._period = ctypes.c_float()
-
-    def __call__(self):
-        """(frame, seconds) of the beginning of this cycle."""
-        self._call(
-            self._client,
-            ctypes.byref(self._frames),
-            ctypes.byref(self._now),
-            ctypes.byref(self._next),
-            ctypes.byref(self._period),
-        )
-        return self._frames.value, self._now.value * 1e-6
 
 
 class Peer:
@@ -83,19 +53,17 @@ class Peer:
         self.inputs = []
         self.recording = np.zeros((self.frames, 0), np.float32)
         self.start = None
-        self.start_s = None
         self.armed = self.finished = False
         self.expected = None
         self.next_event = self.burst_at = 0
         self.sent = []
         self.xruns = self.lost_blocks = 0
-        self.stalls = []
+        self.cycles = []
         self.error = None
         self.gone = False
         self.client.set_process_callback(self.process)
         self.client.set_xrun_callback(self.on_xrun)
         self.client.set_shutdown_callback(self.on_shutdown)
-        self.cycle_times = CycleTimes(self.client)
 
     def on_xrun(self, _delay):
         self.xruns += 1
@@ -124,29 +92,28 @@ class Peer:
         raise SystemExit(f"jack_peer: no port {pattern!r} appeared within 5 s")
 
     def process(self, frames):
+        entered_s = time.perf_counter()
         try:
             self.midi.clear_buffer()
             if self.speaker is not None:
                 self.speaker.get_array()[:] = 0.0
             if self.armed and not self.finished:
                 before = len(self.sent)
-                self.play(frames)
+                self.play(frames, entered_s)
                 handed_s = time.perf_counter()
                 for event in self.sent[before:]:
                     event.append(handed_s)
         except Exception as error:
             self.error, self.finished = repr(error), True
 
-    def play(self, frames):
-        frame, now_s = self.cycle_times()
+    def play(self, frames, entered_s):
+        frame = self.client.last_frame_time
         if self.start is None:
-            self.start, self.start_s, self.expected = frame, now_s, frame
-        lost_blocks = (frame - self.expected) // frames
-        self.lost_blocks += lost_blocks
+            self.start = self.expected = frame
+        self.lost_blocks += (frame - self.expected) // frames
         self.expected = frame + frames
         offset = frame - self.start
-        if lost_blocks or time.clock_gettime(time.CLOCK_MONOTONIC_RAW) - now_s > STALL_S:
-            self.stalls.append(offset)
+        self.cycles.append([offset, entered_s])
         if offset >= self.frames:
             self.finished = True
             return
@@ -163,7 +130,7 @@ class Peer:
             # Where a block was lost the event goes out late, at the first frame there is.
             within = max(at - offset, 0)
             self.midi.write_midi_event(within, data)
-            self.sent.append([offset + within, now_s + within / self.client.samplerate])
+            self.sent.append([offset + within])
             self.next_event += 1
         here = min(frames, self.frames - offset)
         sound = self.sound[offset : offset + frames]
@@ -187,12 +154,11 @@ class Peer:
                     "done": not self.gone,
                     "error": "the server went away" if self.gone else self.error,
                     "start_frame": self.start,
-                    "start_s": self.start_s,
                     "events": self.sent,
                     "burst_events": self.burst_at,
                     "xruns": self.xruns,
                     "lost_blocks": self.lost_blocks,
-                    "stalls": self.stalls,
+                    "cycles": self.cycles,
                 }
             )
             sys.stdin.readline()

@@ -100,6 +100,18 @@ def test_a_dropout_leaves_the_rate_that_was_learnt(block):
     assert np.abs(np.array(rates) / simulation.true_rate - 1).max() < 3e-4
 
 
+@pytest.mark.parametrize("block", [64, 128])
+@pytest.mark.parametrize("part", [-0.7, -0.4, 0.3, 0.5, 0.9])
+def test_a_shift_by_a_part_of_a_block_is_forgotten_within_half_a_second(block, part):
+    """A sound system that begins its time anew after a stall does so anywhere in a block."""
+    simulation = Simulation(block, ppm=50, noise_s=0.0001)
+    simulation.run(20)
+    simulation.skipped_s += part * block / RATE
+    simulation.run(0.5)
+    assert np.abs(simulation.run(2)).max() < 0.00005
+    assert simulation.clock.relocks == 1
+
+
 def test_a_single_late_callback_moves_nothing():
     simulation = Simulation(128, noise_s=0.0)
     simulation.run(5)

@@ -79,7 +79,7 @@ def _spread_of_stamps(server, jack_peer, turn):
         report = peer.done()
         got = collect(inputs, 160, timeout_s=0.5)
     stamps = {128 * (a.message.velocity - 1) + a.message.note: a.stamp_s for a in got}
-    late = np.array([stamps[n] - e[2] for n, e in enumerate(report["events"]) if n in stamps])
+    late = np.array([stamps[n] - e[1] for n, e in enumerate(report["events"]) if n in stamps])
     if len(late) < 110:
         return np.inf
     late = late[40:] - np.median(late[40:])
