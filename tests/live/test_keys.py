@@ -157,9 +157,11 @@ with KeyReader() as reader:
 @pytest.fixture
 def child(terminal):
     _, theirs = terminal
+    # In a group of its own: the system stops nobody in a group that has lost its shell.
     process = subprocess.Popen(
-        [sys.executable, "-c", CHILD], stdin=theirs, stdout=subprocess.PIPE, text=True
-    )
+        [sys.executable, "-c", CHILD], stdin=theirs, stdout=subprocess.PIPE, text=True,
+        process_group=0,
+    )  # fmt: skip
     assert process.stdout.readline() == "ready\n"
     yield process
     process.kill()
