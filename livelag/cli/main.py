@@ -16,6 +16,7 @@ from pathlib import Path
 from types import FrameType
 
 import livelag
+from livelag.cli.command_line import CommandLineParser
 from livelag.errors import LivelagError
 
 COMMANDS = (
@@ -47,9 +48,9 @@ Example: livelag render --out demo.wav --picture demo.png
 """
 
 
-def build_parser() -> argparse.ArgumentParser:
+def build_parser() -> CommandLineParser:
     """The whole command line."""
-    parser = argparse.ArgumentParser(
+    parser = CommandLineParser(
         prog="livelag",
         description=_DESCRIPTION,
         epilog=_EPILOG,
@@ -68,7 +69,7 @@ def run(arguments: Sequence[str] | None = None) -> int:
         _end_on_terminate()
         _make_output_safe()
         try:
-            args = build_parser().parse_args(arguments)
+            args = build_parser().parse_command(arguments)
             args.run(args)
         finally:
             sys.stdout.flush()

@@ -94,12 +94,28 @@ def test_every_command_has_json_and_an_example(livelag, name):
     assert answer.out.count(f"Example: livelag {name}") == 1
 
 
-@pytest.mark.parametrize("arguments", [(), ("rendr",), ("ranges", "a", "b"), ("--nope",)])
-def test_a_wrong_command_line_is_status_2(livelag, arguments):
+@pytest.mark.parametrize(
+    ("arguments", "said"),
+    [
+        ((), "livelag: the following arguments are required: COMMAND; see livelag --help"),
+        (("rendr",), "livelag: COMMAND: invalid choice: 'rendr'"),
+        (("ranges", "a", "b"), "livelag ranges: 'b' is one argument too many; see livelag"),
+        (("--nope", "ranges"), "livelag ranges: there is no option --nope; see"),
+        (
+            ("render", "--rotaton=1"),
+            "livelag render: there is no option --rotaton; did you mean --rotation; see livelag",
+        ),
+        (("render", "--rate", "fast"), "livelag render: --rate: 'fast' is not a whole number; see"),
+        (("render", "--rotation", "1/2"), "livelag render: --rotation: '1/2' is not a number; see"),
+        (("render", "--rotation"), "livelag render: --rotation: expected one argument; see"),
+        (("render", "--rate", "a\nb"), "livelag render: --rate: 'a\\nb' is not a whole"),
+    ],
+)
+def test_a_wrong_command_line_is_one_line_and_status_2(livelag, arguments, said):
     answer = livelag(*arguments)
-    assert answer.status == 2
-    assert answer.out == ""
-    assert answer.err.startswith("usage: livelag")
+    assert (answer.status, answer.out) == (2, "")
+    assert answer.err.startswith(said)
+    assert len(answer.err.splitlines()) == 1
 
 
 def test_a_message_stays_on_one_line_whatever_the_name(livelag):

@@ -250,9 +250,9 @@ def test_a_name_as_long_as_the_system_takes_will_do(livelag, tmp_path):
         (("--bypass", "--rotation", "0"), "--rotation changes nothing"),
         (("--bypass", "--range", "slow"), "--range changes nothing"),
         (("--phrase", "run", "--midi", "x.mid"), "not allowed with argument"),
-        (("--rotation", "half"), "invalid float value"),
-        (("--rate", "44.1k"), "invalid int value"),
-        (("--loudly",), "unrecognized arguments: --loudly"),
+        (("--rotation", "half"), "is not a number"),
+        (("--rate", "44.1k"), "is not a whole number"),
+        (("--loudly",), "there is no option --loudly"),
     ],
 )
 def test_an_option_that_does_not_apply_is_a_wrong_command_line(livelag, tmp_path, options, message):
