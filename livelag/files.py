@@ -48,14 +48,20 @@ class WholeFiles:
             raise cannot_write(path, error) from error
         # A short name, so that whatever the system takes for the file it takes for this one.
         temporary = folder / f".livelag-{secrets.token_hex(6)}.part{path.suffix}"
+        self._pending.append((temporary, path))  # before it exists: an interrupt may come between
         try:
             # Made now: permissions alone do not tell whether a folder can be written to.
             temporary.open("xb").close()
         except OSError as error:
             where = f"{path}: folder {str(folder)!r} cannot be written to"
             raise FileError(f"{where}: {error.strerror}") from error
-        self._pending.append((temporary, path))
         return temporary
+
+    def discard(self) -> None:
+        """Remove what has not been renamed into place."""
+        for temporary, _ in self._pending:
+            with contextlib.suppress(OSError):
+                temporary.unlink()
 
     def __exit__(
         self,
@@ -70,9 +76,7 @@ class WholeFiles:
         except OSError as failure:
             raise cannot_write(path, failure) from failure
         finally:
-            for temporary, _ in self._pending:
-                with contextlib.suppress(OSError):
-                    temporary.unlink()
+            self.discard()
         if isinstance(error, OSError) and not isinstance(error, FileError) and self._pending:
             raise cannot_write(self._meant(error), error) from error
 
@@ -111,12 +115,19 @@ class WholeFolder:
             # On the same disk as the place, so that moving over is quick and cannot run out.
             beside = path if path.is_dir() else path.parent
             self._work = beside / f".livelag-{secrets.token_hex(6)}.part"
-            self._work.mkdir()
+            self._make()
         except OSError as error:
             if isinstance(error, FileError):
                 raise
             raise cannot_write(path, error) from error
         return self._work
+
+    def _make(self) -> None:
+        try:
+            self._work.mkdir()
+        except BaseException:  # an interrupt that came meanwhile
+            shutil.rmtree(self._work, ignore_errors=True)
+            raise
 
     def __exit__(
         self,
@@ -168,7 +179,11 @@ def check_place(path: Path) -> None:
     Raises:
         FileError: as `WholeFiles.temporary` does.
     """
-    WholeFiles().temporary(path).unlink()
+    files = WholeFiles()
+    try:
+        files.temporary(path)
+    finally:
+        files.discard()
 
 
 def cannot_write(path: Path, error: OSError) -> FileError:

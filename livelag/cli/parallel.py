@@ -2,17 +2,61 @@
 
 from __future__ import annotations
 
-import multiprocessing
-import signal
-from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import ProcessPoolExecutor
-from concurrent.futures.process import BrokenProcessPool
-from contextlib import contextmanager
-from typing import Any, TypeVar
+import os
+import pickle
+import subprocess
+import sys
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from contextlib import suppress
+from queue import SimpleQueue
+from typing import IO, Any, TypeVar, cast
 
 from livelag.errors import LivelagError
 
 Answer = TypeVar("Answer")
+
+# In a process group of its own, which Ctrl-C and a closed terminal do not reach: only the command
+# that started it tells a worker to end.
+_PROGRAM = "import sys; sys.path[:] = {path!r}; from livelag.cli import worker; worker.main()"
+_OWN_GROUP: dict[str, Any] = {
+    "process_group": 0,
+    "creationflags": getattr(subprocess, "CREATE_NEW_PROCESS_GROUP", 0),
+}
+
+
+class _Worker:
+    """A process that answers calls one by one; it ends by itself when its pipes close."""
+
+    def __init__(self) -> None:
+        self._process = subprocess.Popen(
+            [sys.executable, "-c", _PROGRAM.format(path=sys.path)],
+            stdin=subprocess.PIPE,
+            stdout=subprocess.PIPE,
+            **_OWN_GROUP,
+        )
+        self._stdin = cast("IO[bytes]", self._process.stdin)
+        self._stdout = cast("IO[bytes]", self._process.stdout)
+
+    def call(self, function: Callable[..., Answer], arguments: tuple[Any, ...]) -> Answer:
+        try:
+            pickle.dump((function, arguments), self._stdin)
+            self._stdin.flush()
+            done, answer = pickle.load(self._stdout)
+        except (EOFError, OSError, pickle.UnpicklingError) as error:
+            raise LivelagError(
+                "a rendering process was ended from outside, perhaps for want of memory"
+            ) from error
+        if not done:
+            raise answer
+        return cast("Answer", answer)
+
+    def end(self) -> None:
+        self._process.kill()
+        self._process.wait()
+        for pipe in (self._stdout, self._stdin):
+            with suppress(OSError):  # a call that it did not take any more
+                pipe.close()
 
 
 def in_parallel(function: Callable[..., Answer], tasks: Sequence[tuple[Any, ...]]) -> list[Answer]:
@@ -20,48 +64,27 @@ def in_parallel(function: Callable[..., Answer], tasks: Sequence[tuple[Any, ...]
 
     Raises:
         LivelagError: if a process was ended from outside.
+        Exception: what the first call that raised did.
     """
     if len(tasks) == 1:
         return [function(*tasks[0])]
-    # Spawned, not forked: threads of the parent must not be copied half-way.
-    pool = ProcessPoolExecutor(mp_context=multiprocessing.get_context("spawn"))
+    idle: SimpleQueue[_Worker] = SimpleQueue()
+
+    def call(arguments: tuple[Any, ...]) -> Answer:
+        worker = idle.get()
+        try:
+            return worker.call(function, arguments)
+        finally:
+            idle.put(worker)
+
+    workers = [_Worker() for _ in range(min(len(tasks), os.cpu_count() or 1))]
+    threads = ThreadPoolExecutor(len(workers))
     try:
-        with _stop_afterwards():
-            futures = [pool.submit(function, *task) for task in tasks]
+        for worker in workers:
+            idle.put(worker)
+        futures = [threads.submit(call, arguments) for arguments in tasks]
         return [future.result() for future in futures]
-    except BrokenProcessPool as error:
-        raise LivelagError(
-            "a rendering process was ended from outside, perhaps for want of memory"
-        ) from error
-    except BaseException:
-        for process in list((pool._processes or {}).values()):
-            process.terminate()
-        raise
     finally:
-        pool.shutdown(cancel_futures=True)
-
-
-@contextmanager
-def _stop_afterwards() -> Iterator[None]:
-    """Put off Ctrl-C, SIGTERM and SIGHUP, so that no process is lost while it is being started.
-
-    The processes inherit the blocked Ctrl-C and leave it to their parent.
-    """
-    asked: list[int] = []
-    ours = {
-        number: signal.signal(number, lambda number, frame: asked.append(number))
-        for name in ("SIGINT", "SIGTERM", "SIGHUP")
-        if (number := getattr(signal, name, None)) is not None
-        and signal.getsignal(number) != signal.SIG_IGN
-    }
-    if hasattr(signal, "pthread_sigmask"):
-        signal.pthread_sigmask(signal.SIG_BLOCK, [signal.SIGINT])
-    try:
-        yield
-    finally:
-        if hasattr(signal, "pthread_sigmask"):
-            signal.pthread_sigmask(signal.SIG_UNBLOCK, [signal.SIGINT])
-        for number, handler in ours.items():
-            signal.signal(number, handler)
-    if asked:
-        raise KeyboardInterrupt
+        for worker in workers:
+            worker.end()
+        threads.shutdown(cancel_futures=True)

@@ -159,6 +159,7 @@ def test_stopped_in_mid_render(start, long_song, number, name):
     ("option", "number", "wait_s"),
     [
         ("--out", signal.SIGINT, 0.0), ("--out", signal.SIGINT, 0.3),
+        ("--out", signal.SIGTERM, 0.0), ("--out", signal.SIGHUP, 0.1),
         ("--out", signal.SIGINT, None), ("--out", signal.SIGTERM, None),
         ("--page", signal.SIGINT, None),
     ],
@@ -179,17 +180,17 @@ def test_a_set_stopped_at_any_time(start, long_song, option, number, wait_s):
     assert (status, out) == (130, "")
     assert err == "livelag: interrupted; nothing was left half-written\n"
     assert not any(folder.iterdir())
-    wait_for(lambda: not _group_lives(process.pid))
+    wait_for(lambda: not _session_lives(process.pid))
 
 
-def _group_lives(group):
-    """Whether any process of a group still runs; one that only waits to be buried does not."""
+def _session_lives(session):
+    """Whether any process of a session still runs; one that only waits to be buried does not."""
     for stat in Path("/proc").glob("[0-9]*/stat"):
         try:
-            state, _, its_group = stat.read_text().rpartition(")")[2].split()[:3]
+            state, _, _, its_session = stat.read_text().rpartition(")")[2].split()[:4]
         except OSError:
             continue
-        if int(its_group) == group and state != "Z":
+        if int(its_session) == session and state != "Z":
             return True
     return False
 
@@ -206,7 +207,7 @@ def test_a_worker_that_is_killed_is_one_line(start, long_song):
     workers = [
         int(pid)
         for pid in children.read_text().split()
-        if b"spawn_main" in Path(f"/proc/{pid}/cmdline").read_bytes()
+        if b"import worker" in Path(f"/proc/{pid}/cmdline").read_bytes()
     ]
     os.kill(workers[0], signal.SIGKILL)
     status, out, err = ended_within(process)
