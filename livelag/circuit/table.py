@@ -15,6 +15,8 @@ from livelag.units import parse_value
 
 Built = TypeVar("Built")
 
+_EXAMPLES = {"": "a number such as 1", "second": "a time such as 2.2 s or 150m"}
+
 
 class Table:
     """One table of a TOML file, with its place in it."""
@@ -94,7 +96,7 @@ class Table:
         Raises:
             InputError: if it is missing though required, or is not a finite value in the unit.
         """
-        value = self._get(key, "a value such as 4k7 or 470n", required)
+        value = self._get(key, _EXAMPLES.get(unit, "a value such as 4k7 or 470n"), required)
         return default if value is None else parse_value(value, unit, self.place(key))
 
     def numbers(self, key: str) -> tuple[float, ...]:

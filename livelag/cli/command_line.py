@@ -42,7 +42,9 @@ def _unknown(word: str, parser: argparse.ArgumentParser) -> str:
 
     option = word.split("=")[0]
     known = [name for action in parser._actions for name in action.option_strings]
-    near = get_close_matches(option, known, 1)
+    if option in known:
+        return f"{option} goes after the command's name"
+    near = get_close_matches(option, known, 1, 0.75)
     return f"there is no option {option}" + (f"; did you mean {near[0]}" if near else "")
 
 

@@ -15,7 +15,7 @@ from livelag.cli.extras import (
     show_written,
     write_extras,
 )
-from livelag.errors import InputError
+from livelag.errors import InputError, LivelagError
 
 if TYPE_CHECKING:
     from livelag.circuit.stage import GlideStage, Setting
@@ -171,7 +171,10 @@ def _named(args: argparse.Namespace, stage: GlideStage, text: str) -> tuple[Path
             f"{text}: {setting!r} is not a setting; write it as FILE@RANGE:ROTATION, such as "
             f"{name or 'a.csv'}@{stage.range_names[0]}:0.5"
         )
-    return Path(name), Setting(stage.range_index(range_name), rotation)
+    try:
+        return Path(name), Setting(stage.range_index(range_name), rotation)
+    except LivelagError as error:
+        raise InputError(f"{text}: {error}") from None
 
 
 def _only_range(args: argparse.Namespace, stage: GlideStage) -> str:

@@ -100,6 +100,8 @@ def test_every_command_has_json_and_an_example(livelag, name):
         ((), "livelag: the following arguments are required: COMMAND; see livelag --help"),
         (("rendr",), "livelag: COMMAND: invalid choice: 'rendr'"),
         (("ranges", "a", "b"), "livelag ranges: 'b' is one argument too many; see livelag"),
+        (("--json", "ranges"), "livelag ranges: --json goes after the command's name; see"),
+        (("audition", "--output", "1"), "livelag audition: there is no option --output; see"),
         (("--nope", "ranges"), "livelag ranges: there is no option --nope; see"),
         (
             ("render", "--rotaton=1"),
