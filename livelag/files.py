@@ -151,21 +151,22 @@ class WholeFolder:
         new = sorted(entry.name for entry in self._work.iterdir())
         older = self._work / "older"
         older.mkdir()
+        # Each noted before it is due: an interrupt may come between. One too many only fails.
         undo: list[Callable[[], object]] = []
         try:
             if not self._path.exists():
-                self._path.mkdir()
                 undo.append(self._path.rmdir)
+                self._path.mkdir()
             for name in sorted(self._outdated.union(new)):
                 target = self._path / name
                 if target.is_dir():
                     raise FileError(f"{target}: is a folder; it is in the way of a file")
                 if target.exists():
-                    target.replace(older / name)
                     undo.append(partial((older / name).replace, target))
+                    target.replace(older / name)
             for name in new:
-                (self._work / name).replace(self._path / name)
                 undo.append((self._path / name).unlink)
+                (self._work / name).replace(self._path / name)
         except BaseException:
             for step in reversed(undo):
                 with contextlib.suppress(OSError):

@@ -207,3 +207,21 @@ def test_cannot_write_says_why():
         "x: cannot be written: Permission denied"
     )
     assert str(cannot_write(Path("x"), OSError("odd"))) == "x: cannot be written: odd"
+
+
+def test_an_interrupt_right_after_a_rename_loses_nothing(tmp_path, monkeypatch):
+    folder = tmp_path / "set"
+    folder.mkdir()
+    (folder / "01.wav").write_text("older")
+    rename = Path.replace
+
+    def rename_and_interrupt(self, target):
+        monkeypatch.undo()
+        rename(self, target)
+        raise KeyboardInterrupt
+
+    with pytest.raises(KeyboardInterrupt), WholeFolder(folder) as work:  # noqa: PT012
+        (work / "01.wav").write_text("new")
+        monkeypatch.setattr(Path, "replace", rename_and_interrupt)
+    assert [path.name for path in folder.iterdir()] == ["01.wav"]
+    assert (folder / "01.wav").read_text() == "older"

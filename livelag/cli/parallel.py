@@ -51,8 +51,10 @@ class _Worker:
             raise answer
         return cast("Answer", answer)
 
-    def end(self) -> None:
+    def kill(self) -> None:
         self._process.kill()
+
+    def bury(self) -> None:
         self._process.wait()
         for pipe in (self._stdout, self._stdin):
             with suppress(OSError):  # a call that it did not take any more
@@ -66,8 +68,8 @@ def in_parallel(function: Callable[..., Answer], tasks: Sequence[tuple[Any, ...]
         LivelagError: if a process was ended from outside.
         Exception: what the first call that raised did.
     """
-    if len(tasks) == 1:
-        return [function(*tasks[0])]
+    if len(tasks) < 2:
+        return [function(*arguments) for arguments in tasks]
     idle: SimpleQueue[_Worker] = SimpleQueue()
 
     def call(arguments: tuple[Any, ...]) -> Answer:
@@ -85,6 +87,8 @@ def in_parallel(function: Callable[..., Answer], tasks: Sequence[tuple[Any, ...]
         futures = [threads.submit(call, arguments) for arguments in tasks]
         return [future.result() for future in futures]
     finally:
+        threads.shutdown(wait=False, cancel_futures=True)  # first: a second interrupt may come
         for worker in workers:
-            worker.end()
-        threads.shutdown(cancel_futures=True)
+            worker.kill()
+        for worker in workers:
+            worker.bury()

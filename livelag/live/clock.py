@@ -21,7 +21,6 @@ from livelag.errors import InputError
 BANDWIDTH_HZ = 0.1
 #: While the loop is young its bandwidth falls as 1/age, which is close to a least-squares line.
 _START_AGE = 16
-_YOUNG_AGE = 64
 _MAX_DRIFT = 0.005
 #: So many callbacks in a row, all off to the same side by most of a block, are a dropout.
 _DROPOUT_AFTER = 4
@@ -64,7 +63,7 @@ class DelayLockedClock:
     plain floats and allocates nothing that grows.
 
     Attributes:
-        relocks: how often the loop had to jump, once for each dropout or pause it noticed.
+        relocks: how often the loop had to jump, for a dropout, a pause or a shift.
     """
 
     def __init__(self, rate_hz: float, bandwidth_hz: float = BANDWIDTH_HZ) -> None:
@@ -122,8 +121,9 @@ class DelayLockedClock:
         if off:
             error = 0.0  # until it is known which it is, coast
         else:
-            self._noise_s += min(block_s / _NOISE_OVER_S, 1.0) * (abs(error) - self._noise_s)
-            if self._age > _YOUNG_AGE:  # a callback that is very late says little
+            self._noise_s += min(block_s / _NOISE_OVER_S, 1 / 64) * (abs(error) - self._noise_s)
+            # A callback that is very late says little, once it is known what is usual.
+            if self._age * block_s > _NOISE_OVER_S:
                 error = min(max(error, -usual_s), usual_s)
         self._age += 1
         self._slope_age += 1
