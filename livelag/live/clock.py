@@ -42,7 +42,7 @@ class _Row:
         return self._sum_s / self.count
 
     def add(self, error_s: float, limit_s: float) -> int:
-        """Take in an error; the length of the row that it ends, or 0."""
+        """Take in an error; how long the row is with it, 0 if it is within the limit."""
         if abs(error_s) <= limit_s:
             self.clear()
             return 0
